@@ -197,7 +197,7 @@ class AnalysisChoices(_Record):
     resample: ResampleChoice = ResampleChoice()
 
 
-class SessionChoices(AnalysisChoices):
+class SessionChoices(AnalysisChoices, kw_only=True):
     """The whole session file."""
 
     session: Name
