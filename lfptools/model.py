@@ -14,6 +14,7 @@ import numpy as np
 from lfptools.checks import read_only
 from lfptools.choices import AnalysisChoices
 from lfptools.errors import InputError
+from lfptools.units import SIGNAL_UNITS
 
 
 def _freeze(record: Any) -> None:
@@ -192,6 +193,35 @@ class Trials:
     layers: dict[str, tuple[float, float]] = field(default_factory=dict)
 
     __post_init__ = _freeze
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Signals:
+    """Time courses of one area, trial by trial: contacts, currents, or the one that stands for it.
+
+    `kind` is "lfp" (uV) or "csd" (uA/mm^3, sinks negative).
+    """
+
+    area: str
+    kind: str
+    channel: np.ndarray  # (n_signals,) index in the recording
+    depth_um: np.ndarray  # (n_signals,)
+    data: np.ndarray  # (n_trials, n_signals, n_times)
+    time_s: np.ndarray  # (n_times,)
+    rate_hz: float
+    note: str = ""
+
+    __post_init__ = _freeze
+
+    @property
+    def unit(self) -> str:
+        """Unit of `data`."""
+        return SIGNAL_UNITS[self.kind]
+
+    @property
+    def label(self) -> str:
+        """Name of the signal in tables: its kind and, where it is one, its depth."""
+        return f"{self.kind} {self.depth_um[0]:g} um" if len(self.depth_um) == 1 else self.kind
 
 
 @dataclass(frozen=True, slots=True, eq=False)

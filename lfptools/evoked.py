@@ -1,0 +1,153 @@
+"""Signals of single trials in, averages with interval bands and smoothed signals out."""
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+from scipy.ndimage import gaussian_filter1d
+from scipy.special import stdtrit
+
+from lfptools.errors import InputError
+from lfptools.model import Signals
+from lfptools.trials import window_mask
+
+#: Candidates for the SD of the Gaussian that smooths averages, ms.
+SMOOTHING_GRID_MS = (0.0, 0.5, 1.0, 1.5, 2.0, 3.0, 4.0, 5.0, 6.0, 8.0, 10.0, 12.0, 14.0)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Average:
+    """Mean over the trials of one condition with its pointwise interval."""
+
+    area: str
+    condition: str
+    kind: str
+    unit: str
+    channel: np.ndarray  # (n_signals,)
+    depth_um: np.ndarray  # (n_signals,)
+    time_s: np.ndarray  # (n_times,)
+    mean: np.ndarray  # (n_signals, n_times)
+    lo: np.ndarray  # (n_signals, n_times)
+    hi: np.ndarray  # (n_signals, n_times)
+    n_trials: int
+    level: float
+
+
+def average(signals: Signals, condition: np.ndarray, name: str, *, level: float) -> Average:
+    """Average the trials of condition `name` with a pointwise t interval.
+
+    Parameters
+    ----------
+    signals : Signals
+        data of shape (n_trials, n_signals, n_times).
+    condition : ndarray of str, shape (n_trials,)
+        Condition of each trial.
+    name : str
+        The condition to average.
+    level : float
+        Coverage of the band at each sample by itself.
+
+    Raises
+    ------
+    InputError
+        If the condition has fewer than 2 trials.
+    """
+    rows = condition == name
+    n_trials = int(np.count_nonzero(rows))
+    if n_trials < 2:
+        raise InputError(f"condition {name!r} has {n_trials} trials; an average needs at least 2")
+    data = signals.data[rows]
+    mean = data.mean(axis=0, dtype=float)
+    half = stdtrit(n_trials - 1, (1 + level) / 2) * data.std(axis=0, ddof=1, dtype=float)
+    half = half / np.sqrt(n_trials)
+    return Average(
+        area=signals.area,
+        condition=name,
+        kind=signals.kind,
+        unit=signals.unit,
+        channel=signals.channel,
+        depth_um=signals.depth_um,
+        time_s=signals.time_s,
+        mean=mean,
+        lo=mean - half,
+        hi=mean + half,
+        n_trials=n_trials,
+        level=level,
+    )
+
+
+def smooth(signals: Signals, sd_s: float) -> Signals:
+    """Smooth every trial with a Gaussian (zero-phase) and thin out samples no longer needed.
+
+    Smoothing is linear, so it is done once, before any resampling. At least 2 samples an SD
+    and 1000 a second stay.
+    """
+    sd_samples = sd_s * signals.rate_hz
+    data = signals.data
+    if sd_samples > 0:
+        data = gaussian_filter1d(data, sd_samples, axis=-1, mode="nearest")
+    step = max(1, int(min(signals.rate_hz // 1000, sd_samples // 2)))
+    return replace(
+        signals,
+        data=data[..., ::step],
+        time_s=signals.time_s[::step],
+        rate_hz=signals.rate_hz / step,
+    )
+
+
+def least_risk_smoothing(
+    signals: list[Signals], condition: np.ndarray, names: list[str], span_s: tuple[float, float]
+) -> float:
+    """Choose one smoothing SD (s) for all signals and conditions that will be compared.
+
+    For each average m of N trials the estimated risk of smoothing with S is
+    |m - S m|^2 + 2 tr(S Sigma) / N, with Sigma from the autocovariance of the trials'
+    residuals, so that 1/f noise is not taken for signal. Risks are divided by the noise power
+    of their average and summed. Because the extremum of a smoothed average needs a little more
+    than its mean square, the next larger SD of the grid is taken.
+
+    Parameters
+    ----------
+    signals : list of Signals
+        One signal each, the ones that stand for their areas.
+    condition : ndarray of str, shape (n_trials,)
+        Condition of each trial.
+    names : list of str
+        Conditions that are estimated.
+    span_s : (float, float)
+        Where the waves are looked for.
+    """
+    risk = np.zeros(len(SMOOTHING_GRID_MS))
+    for each in signals:
+        for name in names:
+            risk += _relative_risk(each, condition == name, span_s)
+    best = int(np.argmin(risk))
+    return SMOOTHING_GRID_MS[min(best + 1, len(SMOOTHING_GRID_MS) - 1)] / 1000
+
+
+def _relative_risk(
+    signals: Signals, rows: np.ndarray, span_s: tuple[float, float]
+) -> np.ndarray:
+    trials = signals.data[rows, 0].astype(float)
+    n_trials = len(trials)
+    mean = trials.mean(axis=0)
+    inside = window_mask(signals.time_s, span_s)
+    covariance = _autocovariance(trials - mean) * n_trials / (n_trials - 1)
+    lags = np.arange(len(covariance))
+    risk = []
+    for sd_ms in SMOOTHING_GRID_MS:
+        sd = sd_ms / 1000 * signals.rate_hz
+        smoothed = gaussian_filter1d(mean, sd, mode="nearest") if sd > 0 else mean
+        kernel = np.exp(-0.5 * (lags / sd) ** 2) if sd > 0 else (lags == 0).astype(float)
+        kernel = kernel / (2 * kernel.sum() - kernel[0])
+        noise = 2 * kernel @ covariance - kernel[0] * covariance[0]
+        misfit = ((mean - smoothed)[inside] ** 2).mean()
+        risk.append(misfit + 2 * noise / n_trials)
+    return np.array(risk) / (covariance[0] / n_trials)
+
+
+def _autocovariance(residuals: np.ndarray) -> np.ndarray:
+    """Return the autocovariance over lags 0 .. n_times - 1, averaged over trials."""
+    n_times = residuals.shape[1]
+    spectrum = np.fft.rfft(residuals, 2 * n_times, axis=1)
+    power = (np.abs(spectrum) ** 2).mean(axis=0)
+    return np.fft.irfft(power)[:n_times] / n_times
