@@ -164,7 +164,7 @@ def measure_sink(
         kind="sink" if search.extremum == "trough" else "source",
         depth_um=float(mean[0][0]),
         depth=intervals[0],
-        extent_um=float(mean[4][0]),
+        extent_um=_half_extent(mean[4][0], int(mean[5][0]), csd.depth_um),
         onset_s=float(mean[1][0]),
         onset=intervals[1],
         peak_s=float(mean[2][0]),
@@ -197,7 +197,7 @@ def _resampled_sinks(
 def _sink_of(
     maps: np.ndarray, depth_um: np.ndarray, usable: np.ndarray, time_s: np.ndarray, search: Search
 ) -> tuple[np.ndarray, ...]:
-    """Return depth, onset, peak time, density and extent of the strongest sink of each map."""
+    """Return depth, onset, peak time, density, depth profile and contact of each map's sink."""
     inside = window_mask(time_s, search.span_s)
     up = search.sign * maps
     strength = np.where(usable[:, None] & inside, up, -np.inf).max(axis=-1)
@@ -209,8 +209,7 @@ def _sink_of(
     profile = np.take_along_axis(up, sample.astype(int)[:, None, None], axis=2)[..., 0]
     depth = _refined_depth(profile, contact, depth_um)
     nan = np.where(np.isfinite(found.time_s), 0.0, np.nan)
-    extent = _half_extent(profile, contact, depth_um)
-    return depth + nan, found.onset_s, found.time_s, found.amplitude, extent + nan
+    return depth + nan, found.onset_s, found.time_s, found.amplitude, profile, contact
 
 
 def _refined_depth(profile: np.ndarray, at: np.ndarray, depth_um: np.ndarray) -> np.ndarray:
@@ -226,19 +225,16 @@ def _refined_depth(profile: np.ndarray, at: np.ndarray, depth_um: np.ndarray) ->
     return np.where(bend < 0, np.clip(vertex, 0.5 * (x0 + x1), 0.5 * (x1 + x2)), x1)
 
 
-def _half_extent(profile: np.ndarray, at: np.ndarray, depth_um: np.ndarray) -> np.ndarray:
+def _half_extent(profile: np.ndarray, at: int, depth_um: np.ndarray) -> float:
     """Width along depth at half the peak, linear between contacts, cut at the array's ends."""
     fine = np.linspace(depth_um[0], depth_um[-1], 20 * (len(depth_um) - 1) + 1)
-    widths = np.empty(len(at))
-    for row, (values, index) in enumerate(zip(profile, at, strict=True)):
-        above = np.interp(fine, depth_um, values) >= values[index] / 2
-        centre = int(np.searchsorted(fine, depth_um[index]))
-        lower = np.flatnonzero(~above[:centre])
-        upper = np.flatnonzero(~above[centre:])
-        first = fine[lower[-1] + 1] if len(lower) else fine[0]
-        last = fine[centre + upper[0] - 1] if len(upper) else fine[-1]
-        widths[row] = last - first
-    return widths
+    above = np.interp(fine, depth_um, profile) >= profile[at] / 2
+    centre = int(np.searchsorted(fine, depth_um[at]))
+    lower = np.flatnonzero(~above[:centre])
+    upper = np.flatnonzero(~above[centre:])
+    first = fine[lower[-1] + 1] if len(lower) else fine[0]
+    last = fine[centre + upper[0] - 1] if len(upper) else fine[-1]
+    return float(last - first)
 
 
 def _sink_p(up: np.ndarray, signs: np.ndarray) -> float:
