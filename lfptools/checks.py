@@ -45,8 +45,10 @@ def span(name: str, value: Sequence[float], unit: str = "") -> tuple[float, floa
         If it does not.
     """
     if len(value) != 2 or not np.all(np.isfinite(value)) or not value[0] < value[1]:
-        raise InputError(f"{name} is {list(value)} {unit}".rstrip() + "; it must be [first, last] "
-                         "with first below last")
+        raise InputError(
+            f"{name} is {list(value)} {unit}".rstrip() + "; it must be [first, last] "
+            "with first below last"
+        )
     return float(value[0]), float(value[1])
 
 

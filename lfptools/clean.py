@@ -35,7 +35,9 @@ def find_bad_contacts(contacts: Contacts, step_uv: np.ndarray, *, factor: float)
     return contacts
 
 
-def large_trials(amplitude_uv: np.ndarray, condition: np.ndarray, *, robust_sd: float) -> np.ndarray:
+def large_trials(
+    amplitude_uv: np.ndarray, condition: np.ndarray, *, robust_sd: float
+) -> np.ndarray:
     """Return which trials are far larger than the others of their condition on any contact.
 
     Judged on the logarithm of the peak-to-peak amplitude, which is near normal, against the

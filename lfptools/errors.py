@@ -1,10 +1,10 @@
 """The errors that lfptools raises; everything a user can mend descends from InputError.
 
-    LfptoolsError
-    └── InputError (also a ValueError)
-        ├── SessionFileError   the session file: a key, a value, a missing part
-        ├── ReaderError        a recording, a table of events or spikes
-        └── OutputError        the output folder
+LfptoolsError
+└── InputError (also a ValueError)
+    ├── SessionFileError   the session file: a key, a value, a missing part
+    ├── ReaderError        a recording, a table of events or spikes
+    └── OutputError        the output folder
 """
 
 

@@ -124,9 +124,7 @@ def least_risk_smoothing(
     return SMOOTHING_GRID_MS[min(best + 1, len(SMOOTHING_GRID_MS) - 1)] / 1000
 
 
-def _relative_risk(
-    signals: Signals, rows: np.ndarray, span_s: tuple[float, float]
-) -> np.ndarray:
+def _relative_risk(signals: Signals, rows: np.ndarray, span_s: tuple[float, float]) -> np.ndarray:
     trials = signals.data[rows, 0].astype(float)
     n_trials = len(trials)
     mean = trials.mean(axis=0)

@@ -278,4 +278,3 @@ class CutSession:
     def trials_of(self, area: str) -> Trials | None:
         """Return the trials of `area`, or None where no LFP was recorded there."""
         return next((each for each in self.areas if each.area == area), None)
-

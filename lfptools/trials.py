@@ -65,7 +65,8 @@ def windows_of(
 
 def survey(area: Area, time_s: np.ndarray, span_s: tuple[float, float]) -> AreaSurvey:
     """Read every window of `area` once and keep its amplitude and noise per contact."""
-    assert area.recording is not None and area.contacts is not None
+    assert area.recording is not None
+    assert area.contacts is not None
     shape = (len(time_s), len(area.contacts))
     amplitude, step = np.full(shape, np.nan), np.full(shape, np.nan)
     for event, _, window in windows_of(area.recording, area.contacts.channel, time_s, span_s):

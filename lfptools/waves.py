@@ -24,6 +24,16 @@ ONSET_FRACTION = {"auto": 0.5, "half": 0.5, "quarter": 0.25}
 _MIN_SNR = {0.5: 5.0, 0.25: 10.0}
 _WIDEST_INTERVAL_S = 0.030
 _MIN_DEFINED = 0.95
+#: What is emptied where the wave was not found.
+_EMPTIED = tuple(
+    f"{column}{end}"
+    for column, ends in (
+        ("time", ("_s", "_lo_s", "_hi_s")),
+        ("onset", ("_s", "_lo_s", "_hi_s")),
+        ("amplitude", ("", "_lo", "_hi")),
+    )
+    for end in ends
+)
 #: Resampled curves held at a time, in values.
 _BLOCK_VALUES = 8_000_000
 
@@ -255,9 +265,7 @@ def _resampled_landmarks(
     )
 
 
-def _found_p(
-    data: np.ndarray, time_s: np.ndarray, search: Search, signs: np.ndarray
-) -> np.ndarray:
+def _found_p(data: np.ndarray, time_s: np.ndarray, search: Search, signs: np.ndarray) -> np.ndarray:
     wide = window_mask(time_s, search.prominence_span_s)
     n_trials, n_signals = data.shape[:2]
     n_times = int(np.count_nonzero(wide))
@@ -283,16 +291,15 @@ def _trial_noise(data: np.ndarray, time_s: np.ndarray, search: Search) -> np.nda
 
 def _judged(estimate: WaveEstimate, onset_defined: np.ndarray, search: Search) -> WaveEstimate:
     """Add the notes, and empty what was not found."""
-    notes = [_note(estimate, index, onset_defined[index], search) for index in range(len(estimate.p))]
+    notes = [
+        _note(estimate, index, onset_defined[index], search) for index in range(len(estimate.p))
+    ]
     lost = np.array([note.startswith("not found") for note in notes])
     no_onset = lost | (onset_defined < 0.5)
     emptied = {
-        name: np.where(no_onset if name.startswith("onset") else lost, np.nan, getattr(estimate, name))
-        for name in (
-            "time_s", "time_lo_s", "time_hi_s", "onset_s", "onset_lo_s", "onset_hi_s",
-            "amplitude", "amplitude_lo", "amplitude_hi",
-        )
-    }  # fmt: skip
+        name: np.where(no_onset if name.startswith("onset") else lost, np.nan, value)
+        for name, value in ((name, getattr(estimate, name)) for name in _EMPTIED)
+    }
     return replace(estimate, note=tuple(notes), **emptied)
 
 
