@@ -196,6 +196,8 @@ def found_text(value: Any) -> str:
         return f"the number {value}"
     if isinstance(value, datetime.date | datetime.time):
         return f"the date {value}"
+    if isinstance(value, list) and value and isinstance(value[0], dict):
+        return f"a list of {len(value)} tables"
     if isinstance(value, list):
         return f"the list {value}" if len(str(value)) < 60 else f"a list of {len(value)}"
     return "a table"

@@ -2,7 +2,7 @@
 
 import os
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from pathlib import Path
 
 from lfptools.errors import OutputError
@@ -36,7 +36,8 @@ def whole(path: str | Path) -> Iterator[Path]:
     except OSError as cause:
         raise OutputError(f"{path}: cannot be written ({cause})") from cause
     finally:
-        part.unlink(missing_ok=True)
+        with suppress(OSError):
+            part.unlink(missing_ok=True)
 
 
 def write_whole(path: str | Path, content: bytes) -> Path:
