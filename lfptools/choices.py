@@ -22,11 +22,15 @@ def _default_bands() -> dict[str, Span]:
     return {"theta": (4.0, 8.0), "beta": (13.0, 30.0), "gamma": (30.0, 90.0)}
 
 
+def _in_s(span_ms: Span) -> Span:
+    return span_ms[0] / 1000, span_ms[1] / 1000
+
+
 class _Record(Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
     """A table of the session file: frozen, keyword-only, no key beyond those declared."""
 
 
-class SourceChoice(_Record):
+class SourceChoice(_Record, frozen=True, kw_only=True):
     """One stream of one recording (`[[source]]`)."""
 
     name: Name
@@ -47,7 +51,7 @@ class SourceChoice(_Record):
         return self.clock or self.name
 
 
-class AreaChoice(_Record):
+class AreaChoice(_Record, frozen=True, kw_only=True):
     """One recorded area (`[[area]]`), in the order of the pathway."""
 
     name: Name
@@ -61,7 +65,7 @@ class AreaChoice(_Record):
     layers: dict[str, Span] = {}
 
 
-class UnitsChoice(_Record):
+class UnitsChoice(_Record, frozen=True, kw_only=True):
     """Sorted units of one area (`[[units]]`)."""
 
     area: str
@@ -69,7 +73,7 @@ class UnitsChoice(_Record):
     keep: list[str] | None = None
 
 
-class EventsChoice(_Record):
+class EventsChoice(_Record, frozen=True, kw_only=True):
     """The table of stimuli (`[events]`)."""
 
     file: str
@@ -78,21 +82,31 @@ class EventsChoice(_Record):
     drop: list[int] = []
 
 
-class TrialsChoice(_Record):
+class TrialsChoice(_Record, frozen=True, kw_only=True):
     """How trials are cut (`[trials]`)."""
 
     window_ms: Span
     baseline_ms: Span
 
+    @property
+    def span_s(self) -> Span:
+        """Window of a trial in s, 0 at the stimulus."""
+        return _in_s(self.window_ms)
 
-class WindowFor(_Record):
+    @property
+    def baseline_s(self) -> Span:
+        """Baseline in s."""
+        return _in_s(self.baseline_ms)
+
+
+class WindowFor(_Record, frozen=True, kw_only=True):
     """Another span or sign of a window for one area (`[window.for.AREA]`)."""
 
     span_ms: Span | None = None
     extremum: Extremum | None = None
 
 
-class WindowChoice(_Record):
+class WindowChoice(_Record, frozen=True, kw_only=True):
     """One window after the stimulus in which a wave is looked for (`[[window]]`)."""
 
     name: Name
@@ -110,8 +124,7 @@ class WindowChoice(_Record):
     def span_s(self, area: str) -> Span:
         """Span of the window in `area`, in s, half-open on the sample grid."""
         own = self.for_.get(area)
-        first, last = own.span_ms if own and own.span_ms else self.span_ms
-        return first / 1000, last / 1000
+        return _in_s(own.span_ms if own and own.span_ms else self.span_ms)
 
     def extremum_in(self, area: str) -> Extremum:
         """Sign of the wave looked for in `area`."""
@@ -121,11 +134,10 @@ class WindowChoice(_Record):
     @property
     def direction_span_s(self) -> Span:
         """Span used for coupling and direction, in s."""
-        first, last = self.direction_ms or self.span_ms
-        return first / 1000, last / 1000
+        return _in_s(self.direction_ms or self.span_ms)
 
 
-class CleanChoice(_Record):
+class CleanChoice(_Record, frozen=True, kw_only=True):
     """Rules of rejection (`[clean]`)."""
 
     #: A trial is rejected when its log peak-to-peak amplitude lies this many robust SDs
@@ -135,28 +147,28 @@ class CleanChoice(_Record):
     contact_factor: Annotated[float, Meta(gt=1)] = 4.0
 
 
-class LatencyChoice(_Record):
+class LatencyChoice(_Record, frozen=True, kw_only=True):
     """How waves are measured (`[latency]`)."""
 
     smooth_ms: Literal["auto"] | NotNegative = "auto"
     onset: Literal["auto", "half", "quarter"] = "auto"
 
 
-class CsdChoice(_Record):
+class CsdChoice(_Record, frozen=True, kw_only=True):
     """Current source density (`[csd]`)."""
 
     method: Literal["second_derivative"] = "second_derivative"
     conductivity_s_m: Positive = 0.3
 
 
-class RatesChoice(_Record):
+class RatesChoice(_Record, frozen=True, kw_only=True):
     """Firing (`[rates]`)."""
 
     bin_ms: Positive = 1.0
     latency: Literal["poisson"] = "poisson"
 
 
-class CouplingChoice(_Record):
+class CouplingChoice(_Record, frozen=True, kw_only=True):
     """Spikes against the field (`[coupling]`)."""
 
     field: str = "neighbour"
@@ -164,7 +176,7 @@ class CouplingChoice(_Record):
     n_shuffles: Count = 999
 
 
-class DirectionChoice(_Record):
+class DirectionChoice(_Record, frozen=True, kw_only=True):
     """Which area leads (`[direction]`)."""
 
     signal: Literal["csd", "lfp"] = "csd"
@@ -175,7 +187,7 @@ class DirectionChoice(_Record):
     bands_hz: dict[str, Span] = msgspec.field(default_factory=_default_bands)
 
 
-class ResampleChoice(_Record):
+class ResampleChoice(_Record, frozen=True, kw_only=True):
     """Resampling (`[resample]`)."""
 
     n: Annotated[int, Meta(ge=99, le=100_000)] = 2000
@@ -183,7 +195,7 @@ class ResampleChoice(_Record):
     seed: Annotated[int, Meta(ge=0)] = 1
 
 
-class AnalysisChoices(_Record):
+class AnalysisChoices(_Record, frozen=True, kw_only=True):
     """Every choice that bears on the numbers and none that says where files are."""
 
     trials: TrialsChoice
@@ -197,7 +209,7 @@ class AnalysisChoices(_Record):
     resample: ResampleChoice = ResampleChoice()
 
 
-class SessionChoices(AnalysisChoices, kw_only=True):
+class SessionChoices(AnalysisChoices, frozen=True, kw_only=True):
     """The whole session file."""
 
     session: Name

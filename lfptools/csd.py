@@ -10,7 +10,7 @@ import numpy as np
 from scipy.interpolate import CubicSpline
 
 from lfptools.errors import InputError
-from lfptools.model import Contacts, Signals, Trials, _freeze
+from lfptools.model import Contacts, Frozen, Signals, Trials
 from lfptools.units import A_M3_PER_UA_MM3, UV_PER_V
 
 #: Fewer good contacts than this give no current source density.
@@ -18,7 +18,7 @@ MIN_CONTACTS = 5
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class CsdOperator:
+class CsdOperator(Frozen):
     """A matrix from potentials (uV) at all contacts to current source density (uA/mm^3)."""
 
     matrix: np.ndarray  # (n_depths, n_contacts); columns of bad contacts are 0
@@ -26,8 +26,6 @@ class CsdOperator:
     method: str
     conductivity_s_m: float
     noise_gain: np.ndarray  # (n_depths,) SD in uA/mm^3 for independent noise of 1 uV
-
-    __post_init__ = _freeze
 
 
 def interpolation(contacts: Contacts) -> np.ndarray:

@@ -17,12 +17,16 @@ from lfptools.errors import InputError
 from lfptools.units import SIGNAL_UNITS
 
 
-def _freeze(record: Any) -> None:
-    """Turn every array field of a record into a read-only view once it is built."""
-    for each in fields(record):
-        value = getattr(record, each.name)
-        if isinstance(value, np.ndarray):
-            object.__setattr__(record, each.name, read_only(value))
+class Frozen:
+    """Turns every array field of a record into a read-only view once it is built."""
+
+    __slots__ = ()
+
+    def __post_init__(self) -> None:
+        for each in fields(self):  # type: ignore[arg-type]
+            value = getattr(self, each.name)
+            if isinstance(value, np.ndarray):
+                object.__setattr__(self, each.name, read_only(value))
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -39,7 +43,7 @@ class Run:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class Recording:
+class Recording(Frozen):
     """One stream of one recording, read lazily: a list of contiguous runs.
 
     `fetch(first, last, channels)` returns raw counts, shape (last - first, len(channels));
@@ -57,8 +61,6 @@ class Recording:
     files: tuple[Path, ...] = ()
     depth_um: np.ndarray | None = None  # (n_channels,) as the file gives it, where it does
     amplifier_hz: tuple[float, float] | None = None
-
-    __post_init__ = _freeze
 
     @property
     def n_channels(self) -> int:
@@ -100,15 +102,13 @@ class Recording:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class Contacts:
+class Contacts(Frozen):
     """The contacts of one linear array, from the surface down."""
 
     channel: np.ndarray  # (n,) index in the recording
     depth_um: np.ndarray  # (n,) rising
     bad: np.ndarray  # (n,) bool
     why: tuple[str, ...]  # (n,) reason in words, empty where good
-
-    __post_init__ = _freeze
 
     def __len__(self) -> int:
         return len(self.channel)
@@ -123,7 +123,7 @@ class Contacts:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class SpikeTrains:
+class SpikeTrains(Frozen):
     """Spike times of sorted units, one array a unit, in s on the session's clock."""
 
     unit: tuple[str, ...]
@@ -131,22 +131,18 @@ class SpikeTrains:
     depth_um: np.ndarray  # (n_units,), NaN where unknown
     time_s: tuple[np.ndarray, ...]
 
-    __post_init__ = _freeze
-
     def __len__(self) -> int:
         return len(self.unit)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class Events:
+class Events(Frozen):
     """The stimuli, in the order of the table."""
 
     time_s: np.ndarray  # (n,) on the session's clock, delays taken off
     condition: tuple[str, ...]
     factors: dict[str, tuple[str, ...]] = field(default_factory=dict)
     dropped: np.ndarray | None = None  # (n,) bool, left out by hand
-
-    __post_init__ = _freeze
 
     def __len__(self) -> int:
         return len(self.time_s)
@@ -181,7 +177,7 @@ class Session:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class Trials:
+class Trials(Frozen):
     """The accepted trials of one area, baseline taken off each channel of each trial."""
 
     area: str
@@ -192,11 +188,9 @@ class Trials:
     amplifier_hz: tuple[float, float] | None = None
     layers: dict[str, tuple[float, float]] = field(default_factory=dict)
 
-    __post_init__ = _freeze
-
 
 @dataclass(frozen=True, slots=True, eq=False)
-class Signals:
+class Signals(Frozen):
     """Time courses of one area, trial by trial: contacts, currents, or the one that stands for it.
 
     `kind` is "lfp" (uV) or "csd" (uA/mm^3, sinks negative).
@@ -211,8 +205,6 @@ class Signals:
     rate_hz: float
     note: str = ""
 
-    __post_init__ = _freeze
-
     @property
     def unit(self) -> str:
         """Unit of `data`."""
@@ -225,15 +217,13 @@ class Signals:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class TrialTable:
+class TrialTable(Frozen):
     """One row an event: accepted or not and why."""
 
     time_s: np.ndarray  # (n_events,)
     condition: np.ndarray  # (n_events,) of str
     reason: np.ndarray  # (n_events,) of str, empty where accepted
     factors: dict[str, tuple[str, ...]] = field(default_factory=dict)
-
-    __post_init__ = _freeze
 
     @property
     def accepted(self) -> np.ndarray:

@@ -84,7 +84,7 @@ def cut(session: Session, *, progress: Progress = no_progress) -> CutSession:
         If no condition keeps 8 accepted trials.
     """
     choices = session.choices
-    span_s = tuple(edge / 1000 for edge in choices.trials.window_ms)
+    span_s = choices.trials.span_s
     time_s = session.events.time_s
     condition = np.array(session.events.condition)
     reason = np.full(len(time_s), "", dtype=object)
@@ -132,9 +132,7 @@ def _cut_area(area: Area, contacts: Contacts, table: TrialTable, session: Sessio
     recording = area.recording
     assert recording is not None
     trials = session.choices.trials
-    first, last = sample_span(
-        (trials.window_ms[0] / 1000, trials.window_ms[1] / 1000), recording.rate_hz
-    )
+    first, last = sample_span(trials.span_s, recording.rate_hz)
     span_s = (first / recording.rate_hz, last / recording.rate_hz)
     times = table.accepted_time_s()
     data = np.empty((len(times), len(contacts), last - first), dtype=np.float32)
@@ -152,7 +150,7 @@ def _cut_area(area: Area, contacts: Contacts, table: TrialTable, session: Sessio
         amplifier_hz=recording.amplifier_hz,
         layers=area.layers,
     )
-    return without_baseline(whole, (trials.baseline_ms[0] / 1000, trials.baseline_ms[1] / 1000))
+    return without_baseline(whole, trials.baseline_s)
 
 
 def without_baseline(trials: Trials, span_s: tuple[float, float]) -> Trials:

@@ -7,6 +7,7 @@ paired on the same trials.
 """
 
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from scipy.ndimage import minimum_filter1d
@@ -296,7 +297,7 @@ def _judged(estimate: WaveEstimate, onset_defined: np.ndarray, search: Search) -
     ]
     lost = np.array([note.startswith("not found") for note in notes])
     no_onset = lost | (onset_defined < 0.5)
-    emptied = {
+    emptied: dict[str, Any] = {
         name: np.where(no_onset if name.startswith("onset") else lost, np.nan, value)
         for name, value in ((name, getattr(estimate, name)) for name in _EMPTIED)
     }

@@ -1,6 +1,6 @@
 """The signals of two areas in, every direction estimate of one window and condition out."""
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -44,14 +44,14 @@ class PairEstimate:
     n_trials: int
     span_s: tuple[float, float]
     order: int
-    estimates: tuple[Estimate, ...]
-    test: LeadTest | None
+    estimates: tuple[Estimate, ...] = ()
+    test: LeadTest | None = None
     contrast: OneWay | None = None  # one-way values minus those of reversed time
     contrast_error: float = np.nan
     both_above: bool = False
     slopes: tuple[PhaseSlope | None, ...] = ()
     withheld: str = ""
-    caveats: tuple[str, ...] = field(default=())
+    caveats: tuple[str, ...] = ()
 
 
 def refusals(
@@ -141,14 +141,8 @@ def estimate_pair(
     n_samples = round((span_s[1] - span_s[0]) * rate_hz)
     orders = orders_for(n_samples, rate_hz, choices.order)
     why = refusals(a, b, event_time_s[rows], span_s, rate_hz, orders)
-    known = {
-        "area_a": a.area,
-        "area_b": b.area,
-        "n_trials": int(np.count_nonzero(rows)),
-        "span_s": span_s,
-        "order": orders[-1],
-        "caveats": caveats,
-    }
+    n_trials = int(np.count_nonzero(rows))
+    bare = PairEstimate(a.area, b.area, n_trials, span_s, orders[-1], caveats=caveats)
     if not why:
         project = choices.single_trial == "project" or (
             choices.single_trial == "auto" and span_s[1] > 0
@@ -160,13 +154,13 @@ def estimate_pair(
             why = f"the fit is ill-conditioned (condition number {condition:.1g})"
     if why:
         empty = _empty_estimates(choices.bands_hz, why)
-        return PairEstimate(**known, estimates=empty, test=None, withheld=why)
+        return replace(bare, estimates=empty, withheld=why)
     test = lead_test(both, orders, signs)
     fitted, contrast, contrast_row, error, both_above = _time_domain(products, test, level=level)
     by_band, slopes = _by_band(both, products, span_s, choices.bands_hz, level)
     lagged = Estimate("lagged_interaction", "all", p=test.p_lag, note="of either direction")
-    return PairEstimate(
-        **known,
+    return replace(
+        bare,
         estimates=(fitted, contrast_row, lagged, *by_band),
         test=test,
         contrast=contrast,
