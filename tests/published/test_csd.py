@@ -43,10 +43,9 @@ def test_quadratic_potential_on_uneven_depths():
 def test_cosine_is_damped_by_sinc_squared():
     # h = 100 um, wavelength 800 um: .9496412.
     k = 2 * np.pi / 800
-    ratio = (second_derivative(DEPTH) @ np.cos(k * DEPTH))[1:-1] / (-(k**2) * np.cos(k * DEPTH))[
-        1:-1
-    ]
-    np.testing.assert_allclose(ratio, 0.9496412, atol=5e-8)
+    found = second_derivative(DEPTH) @ np.cos(k * DEPTH)
+    exact = -(k**2) * np.cos(k * DEPTH)
+    np.testing.assert_allclose(found[1:-1], 0.9496412 * exact[1:-1], rtol=5e-8, atol=1e-15)
 
 
 def test_sinks_and_sources_sum_to_zero_over_the_array():
@@ -66,7 +65,8 @@ def test_a_bad_contact_is_filled_in_from_its_neighbours():
     assert np.all(matrix[:, 7] == 0)
     np.testing.assert_allclose(matrix @ np.ones(16), 1, atol=1e-12)
     smooth = np.exp(-(((DEPTH - 700) / 250) ** 2))
-    assert (matrix @ smooth)[7] == pytest.approx(smooth[7], abs=0.01)
+    straight = (smooth[6] + smooth[8]) / 2
+    assert abs((matrix @ smooth)[7] - smooth[7]) < 0.2 * abs(straight - smooth[7])
 
 
 def test_a_bad_outermost_contact_keeps_the_next_ones_value():
@@ -75,5 +75,5 @@ def test_a_bad_outermost_contact_keeps_the_next_ones_value():
 
 
 def test_too_few_good_contacts_are_refused():
-    with pytest.raises(InputError, match="4 of 6 contacts are good.*at least 5"):
+    with pytest.raises(InputError, match="4 of 6 contacts are good"):
         csd_operator(contacts(DEPTH[:6], bad=[1, 2]), conductivity_s_m=0.3)

@@ -21,8 +21,13 @@ from scipy import stats
 from scipy.linalg import solve_discrete_lyapunov
 from statsmodels.tsa.api import VAR
 
-from lfptools.direction.autoregression import Model, fit_model, lagged_products
-from lfptools.direction.autoregression import residual_filters, residual_products
+from lfptools.direction.autoregression import (
+    Model,
+    fit_model,
+    lagged_products,
+    residual_filters,
+    residual_products,
+)
 from lfptools.direction.granger import (
     block_granger,
     granger_spectrum,
