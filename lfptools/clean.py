@@ -8,30 +8,58 @@ from lfptools.model import Contacts
 _SD_PER_MAD = 1.4826
 
 
-def find_bad_contacts(contacts: Contacts, step_uv: np.ndarray, *, factor: float) -> Contacts:
+def step_noise(step_uv: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """Return the SD of each contact's steps, as they are and beside a neighbour's.
+
+    Parameters
+    ----------
+    step_uv : ndarray, shape (n_contacts, n_samples)
+        Differences from one sample to the next: slow activity drops out.
+
+    Returns
+    -------
+    own, local : ndarray, shape (n_contacts,)
+        SD of the steps; least SD of their difference from one of the two contacts on either
+        side, which leaves what no neighbour shares.
+    """
+    own = step_uv.std(axis=1)
+    local = np.full(len(own), np.inf)
+    for distance in (1, 2):
+        if len(own) > distance:
+            difference = (step_uv[distance:] - step_uv[:-distance]).std(axis=1)
+            local[distance:] = np.minimum(local[distance:], difference)
+            local[:-distance] = np.minimum(local[:-distance], difference)
+    return own, np.where(np.isfinite(local), local, own)
+
+
+def find_bad_contacts(
+    contacts: Contacts, step_uv: np.ndarray, local_uv: np.ndarray, *, factor: float
+) -> Contacts:
     """Mark contacts whose noise is far from the array's.
 
-    The noise of a contact is the SD of its steps from one sample to the next (slow activity
-    drops out, sensor noise stays), the median over trials. A contact is dead where that lies
-    below the array's median by `factor`, noisy where it lies above it by `factor`.
+    A contact is dead where its steps are smaller than the array's median by `factor`, noisy
+    where its steps beside those of the most similar neighbour are larger than the array's
+    median by `factor`. Both are medians over trials, so that single artefacts do not count.
 
     Parameters
     ----------
     contacts : Contacts
         With those already known to be bad.
-    step_uv : ndarray, shape (n_trials, n_contacts)
-        SD of the steps in each trial, uV.
+    step_uv, local_uv : ndarray, shape (n_trials, n_contacts)
+        What `step_noise` found in each trial, uV.
     factor : float
         Ratio of SDs, above 1.
     """
-    noise = np.median(step_uv, axis=0)
-    good = ~contacts.bad
-    usual = np.median(noise[good]) if good.any() else np.median(noise)
-    for index, value in enumerate(noise):
-        if value < usual / factor:
-            contacts = contacts.mark(index, f"dead: noise {value:.2g} uV, array {usual:.2g} uV")
-        elif value > usual * factor:
-            contacts = contacts.mark(index, f"noisy: noise {value:.2g} uV, array {usual:.2g} uV")
+    own, local = np.median(step_uv, axis=0), np.median(local_uv, axis=0)
+    good = ~contacts.bad if not contacts.bad.all() else contacts.bad
+    usual_own, usual_local = np.median(own[good]), np.median(local[good])
+    for index in range(len(contacts)):
+        if own[index] < usual_own / factor:
+            why = f"dead: steps of {own[index]:.2g} uV, the array's {usual_own:.2g} uV"
+            contacts = contacts.mark(index, why)
+        elif local[index] > usual_local * factor:
+            why = f"noisy: {local[index]:.2g} uV beside its neighbours, usual {usual_local:.2g} uV"
+            contacts = contacts.mark(index, why)
     return contacts
 
 

@@ -44,7 +44,8 @@ class AreaSurvey:
     """What the first pass found in one area."""
 
     amplitude_uv: np.ndarray  # (n_events, n_contacts) peak to peak, NaN where not read
-    step_uv: np.ndarray  # (n_events, n_contacts) SD from one sample to the next
+    step_uv: np.ndarray  # (n_events, n_contacts) SD of the steps from one sample to the next
+    local_uv: np.ndarray  # (n_events, n_contacts) the same, the most similar neighbour taken off
 
 
 def windows_of(
@@ -68,11 +69,11 @@ def survey(area: Area, time_s: np.ndarray, span_s: tuple[float, float]) -> AreaS
     assert area.recording is not None
     assert area.contacts is not None
     shape = (len(time_s), len(area.contacts))
-    amplitude, step = np.full(shape, np.nan), np.full(shape, np.nan)
+    amplitude, step, local = (np.full(shape, np.nan) for _ in range(3))
     for event, _, window in windows_of(area.recording, area.contacts.channel, time_s, span_s):
         amplitude[event] = np.ptp(window, axis=1)
-        step[event] = np.diff(window, axis=1).std(axis=1)
-    return AreaSurvey(amplitude_uv=amplitude, step_uv=step)
+        step[event], local[event] = clean.step_noise(np.diff(window, axis=1))
+    return AreaSurvey(amplitude_uv=amplitude, step_uv=step, local_uv=local)
 
 
 def cut(session: Session, *, progress: Progress = no_progress) -> CutSession:
@@ -99,7 +100,10 @@ def cut(session: Session, *, progress: Progress = no_progress) -> CutSession:
         missing = ~np.isfinite(found.amplitude_uv).all(axis=1)
         _give_reason(reason, missing, OUTSIDE)
         contacts[area.name] = clean.find_bad_contacts(
-            area.contacts, found.step_uv[~missing], factor=choices.clean.contact_factor
+            area.contacts,
+            found.step_uv[~missing],
+            found.local_uv[~missing],
+            factor=choices.clean.contact_factor,
         )
         large = clean.large_trials(
             found.amplitude_uv[:, ~contacts[area.name].bad],
