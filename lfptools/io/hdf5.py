@@ -40,7 +40,7 @@ def find(file: h5py.File, place: str, *, hops: int = 8) -> Any:
         If a link on the way leads to another file, or a dataset keeps its samples there.
     """
     here: Any = file
-    for part in place.strip("/").split("/"):
+    for part in filter(None, place.split("/")):
         link = here.get(part, getlink=True) if isinstance(here, h5py.Group) else None
         if link is None:
             return None

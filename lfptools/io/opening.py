@@ -180,14 +180,7 @@ def _need_events_inside(
     for first, last in spans:
         inside |= (events.time_s >= first) & (events.time_s <= last)
     if not inside.any():
-        low, high = (
-            (min(first for first, _ in spans), max(last for _, last in spans))
-            if spans
-            else (
-                np.nan,
-                np.nan,
-            )
-        )
+        low, high = np.min(spans or np.nan), np.max(spans or np.nan)
         raise ReaderError(
             f"{path}: all {len(events)} events, {events.time_s.min():g} to "
             f"{events.time_s.max():g} s, lie outside what was recorded, {low:g} to {high:g} s; "

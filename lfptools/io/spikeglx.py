@@ -196,7 +196,9 @@ def _one_gain_or_all_saved(meta: dict, names: tuple[str, ...], path: Path) -> No
     """
     numbers = [int(match[1]) if (match := re.search(r"(\d+)$", each)) else -1 for each in names]
     rows = [row.split() for row in meta.get("imroTbl", ())]
-    gains = {tuple(row[3:5]) for row in rows if len(row) >= 5}
+    # rows of probes with two gains a site; other generations have one fixed gain
+    n_fields = 5 if "imProbeOpt" in meta else 6
+    gains = {tuple(row[3:5]) for row in rows if len(row) == n_fields}
     if len(gains) > 1 and numbers != list(range(len(names))):
         raise ReaderError(
             f"{path}: holds a subset of the channels with unequal gains; needed are equal gains "

@@ -47,8 +47,9 @@ def runs_of(
     firsts = [0]
     for low in range(0, n_samples - 1, chunk):
         steps = np.diff(stamps[low : min(low + chunk, n_samples - 1) + 1])
-        if not np.all(steps > 0):  # also catches what is not finite
-            at = low + int(np.argmax(~(steps > 0))) + 1
+        rises = (steps > 0) & np.isfinite(steps)
+        if not np.all(rises):
+            at = low + int(np.argmin(rises)) + 1
             raise ReaderError(
                 f"{where}: time stamp {at} does not rise over the one before; "
                 "they must be finite and rise"

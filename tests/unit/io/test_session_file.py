@@ -226,7 +226,7 @@ def test_a_session_without_any_data_is_refused(bare):
 
 def test_toml_error_names_line_and_column(bare):
     (bare / "session.toml").write_text('session = "a"\narea = [1, \n')
-    with pytest.raises(SessionFileError, match=r"session\.toml: is not valid TOML.*end of doc|line"):
+    with pytest.raises(SessionFileError, match=r"session\.toml: is not valid TOML"):
         read_session_file(bare / "session.toml")
     (bare / "session.toml").write_text('session = "a"\nsubject = \n')
     with pytest.raises(SessionFileError, match=r"line 2, column 11"):
@@ -314,8 +314,8 @@ def test_written_file_reads_back_in_the_order_of_the_design(bare):
     )  # fmt: skip
     text = path.read_text()
     assert text.startswith("# A session.\n# Invented.\n")
-    places = [text.index(key) for key in
-              ("session =", "[[source]]", "[[area]]", "[events]", "[trials]", "[[window]]")]  # fmt: skip
+    keys = ("session =", "[[source]]", "[[area]]", "[events]", "[trials]", "[[window]]")
+    places = [text.index(key) for key in keys]
     assert places == sorted(places)
     assert 'channels = "0-3" # from the surface down' in text
     assert 'session = "whisk-02" # its name' in text
@@ -330,7 +330,7 @@ def test_a_wrong_session_is_not_written(bare):
         write_session_file(
             bare / "w.toml", {**TABLES, "area": [{**TABLES["area"][0], "pitch_um": -1}]}
         )
-    with pytest.raises(SessionFileError, match="already|does not have yet"):
+    with pytest.raises(SessionFileError, match="does not have yet"):
         write_session_file(bare / "w.toml", {**TABLES, "area": TABLES["area"] * 2})
     assert not (bare / "w.toml").exists()
 
