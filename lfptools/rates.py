@@ -202,11 +202,12 @@ def _estimate(
                 f"{n_found} spikes in baseline and window; not estimated below {MIN_SPIKES}"
             )
             continue
-        row["baseline_hz"] = cell.in_baseline.mean() / np.ptp(_baseline_s(cut))
-        row["window_hz"] = cell.in_window.mean() / np.ptp(cell.span_s)
+        row["baseline_hz"] = float(cell.in_baseline.mean() / np.ptp(_baseline_s(cut)))
+        row["window_hz"] = float(cell.in_window.mean() / np.ptp(cell.span_s))
         row["change_hz"] = row["window_hz"] - row["baseline_hz"]
-        row["lo_hz"], row["hi_hz"] = interval.lo[number], interval.hi[number]
-        row["p"] = p[number]
+        row["lo_hz"] = float(interval.lo[number])
+        row["hi_hz"] = float(interval.hi[number])
+        row["p"] = float(p[number])
         row |= _latency(cut, cell, stimulus_s, weights, rise=row["change_hz"] > 0)
 
 
@@ -236,7 +237,7 @@ def _latency(
     share = float(interval.defined)
     few = f"latency found in {100 * share:.0f} % of resamples" if share < ENOUGH_DEFINED else ""
     return {
-        "latency_ms": latency_s[0] * 1000,
+        "latency_ms": float(latency_s[0] * 1000),
         "latency_lo_ms": float(interval.lo),
         "latency_hi_ms": float(interval.hi),
         "latency_note": few,

@@ -1,4 +1,4 @@
-"""Cut sessions in memory for the tests of spikes: stimuli one second apart, no file behind them."""
+"""Cut sessions in memory for the tests of spikes: stimuli ten seconds apart, no file behind."""
 
 import numpy as np
 
@@ -19,20 +19,20 @@ def choices(
     window_ms: tuple[float, float] = (-200.0, 300.0),
     baseline_ms: tuple[float, float] = (-100.0, 0.0),
     bin_ms: float = 1.0,
-    coupling: CouplingChoice = CouplingChoice(),
+    coupling: CouplingChoice | None = None,
     n: int = 499,
 ) -> AnalysisChoices:
     return AnalysisChoices(
         trials=TrialsChoice(window_ms=window_ms, baseline_ms=baseline_ms),
         window=[WindowChoice(name=name, span_ms=span) for name, span in windows.items()],
         rates=RatesChoice(bin_ms=bin_ms),
-        coupling=coupling,
+        coupling=coupling or CouplingChoice(),
         resample=ResampleChoice(n=n),
     )
 
 
 def stimuli_s(n_trials: int) -> np.ndarray:
-    return 1.0 + np.arange(n_trials)
+    return 10.0 + 10.0 * np.arange(n_trials)
 
 
 def trains(relative_s: list[list[np.ndarray]], **of_units) -> SpikeTrains:
