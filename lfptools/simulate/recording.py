@@ -203,11 +203,13 @@ def _area(
     data_uv = np.empty((stage.n_samples, len(depth_um)), dtype=np.float32)
     for channel, weights in enumerate(mixing):
         noise = rng.standard_normal(stage.n_samples, dtype=np.float32)
-        noise *= bad[channel].noise_uv if channel in bad else scenario.sensor_uv
-        if channel in bad and bad[channel].kind == "dead":
-            data_uv[:, channel] = noise
-        else:
+        if channel not in bad:
+            noise *= scenario.sensor_uv
             data_uv[:, channel] = sosfilt(sos, weights @ series + stage.common_uv + noise)
+        else:  # its own noise arises behind the amplifier
+            data_uv[:, channel] = bad[channel].noise_uv * noise
+            if bad[channel].kind == "noisy":
+                data_uv[:, channel] += sosfilt(sos, weights @ series + stage.common_uv)
     return SimulatedArea(area.name, data_uv, depth_um)
 
 

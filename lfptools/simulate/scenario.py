@@ -255,7 +255,10 @@ class Scenario:
         for name in ("shared", "artefact_share"):
             _share(name, getattr(self, name))
         _share("units.locking", self.units.locking)
-        _share("units.n_locked / units.n_units", self.units.n_locked / self.units.n_units)
+        if self.units.n_locked > self.units.n_units:
+            raise InputError(
+                f"units.n_locked is {self.units.n_locked}; there are {self.units.n_units} units"
+            )
         checks.span("interval_s", self.interval_s, "s")
         _long_enough(self)
         _names_fit(self)

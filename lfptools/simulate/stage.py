@@ -23,7 +23,7 @@ class BadContact:
     channel: int
     depth_um: float
     kind: str  # dead or noisy
-    noise_uv: float  # sd of its own noise
+    noise_uv: float  # sd of its own white noise, as recorded
 
 
 @dataclass(frozen=True, slots=True, eq=False)
