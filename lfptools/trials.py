@@ -1,7 +1,7 @@
 """Recordings and stimulus times in, trials and averages out; each window is read by itself.
 
 Two passes over the windows of all stimuli: `survey` reads what is needed to find bad contacts
-and bad trials and keeps a few numbers a trial; `cut` reads the accepted ones. Nothing here
+and bad trials and keeps a few numbers a trial; `cut_trials` reads the accepted ones. Nothing here
 depends on the length of the recording.
 """
 
@@ -76,7 +76,7 @@ def survey(area: Area, time_s: np.ndarray, span_s: tuple[float, float]) -> AreaS
     return AreaSurvey(amplitude_uv=amplitude, step_uv=step, local_uv=local)
 
 
-def cut(session: Session, *, progress: Progress = no_progress) -> CutSession:
+def cut_trials(session: Session, *, progress: Progress = no_progress) -> CutSession:
     """Find bad contacts and bad trials, then cut the accepted trials of every area.
 
     Raises

@@ -14,7 +14,7 @@ from lfptools.layers import lfp_signals
 from lfptools.model import CutSession, Session, Signals
 from lfptools.rates import finish_calls, firing_rows, rate_curves
 from lfptools.resample import false_discovery_rate
-from lfptools.trials import Progress, cut, no_progress
+from lfptools.trials import Progress, cut_trials, no_progress
 
 _NO_LFP = "no LFP was recorded"
 _ONE_AREA = "fewer than two areas have LFP"
@@ -36,7 +36,7 @@ def analyse(session: Session | CutSession, *, progress: Progress = no_progress) 
     InputError
         If no condition keeps 8 accepted trials, or a recording cannot be read.
     """
-    trials = session if isinstance(session, CutSession) else cut(session, progress=progress)
+    trials = session if isinstance(session, CutSession) else cut_trials(session, progress=progress)
     progress("choosing signals and smoothing", 0.0)
     prepared = prepare(trials)
     rows: dict[str, list[Row]] = {name: [] for name in COLUMNS}

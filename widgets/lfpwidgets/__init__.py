@@ -1,0 +1,1 @@
+"""The interactive bench: plain state objects first, views over them second."""

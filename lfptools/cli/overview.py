@@ -1,0 +1,135 @@
+"""A session file in, what it opens and what would be used of it out, on the terminal."""
+
+from pathlib import Path
+
+import numpy as np
+from rich.console import Console
+from rich.table import Table
+
+from lfptools.clean import find_bad_contacts
+from lfptools.io.formats import FORMATS
+from lfptools.io.opening import open_session
+from lfptools.model import Area, Contacts, Session
+from lfptools.trials import sample_span, survey
+
+#: Windows read to look for bad contacts; a full run reads all.
+_WINDOWS_LOOKED_AT = 40
+#: What a run needs beyond its trials, MB.
+_BASE_MB = 350
+
+
+def show_overview(path: Path) -> None:
+    """Print what a session file opens: sources, areas, units, events, bad contacts, memory."""
+    session = open_session(path)
+    console = Console()
+    console.print(f"session {session.name}" + (f", {session.subject}" if session.subject else ""))
+    for table in (_sources(session), _areas(session), _units(session), _events(session)):
+        if table.row_count:
+            console.print(table)
+    console.print(f"memory of a run: about {memory_mb(session):.0f} MB")
+    console.print("nothing was analysed; `lfptools run` does that")
+
+
+def memory_mb(session: Session) -> float:
+    """Estimate the memory of a run: trials and their currents as 4-byte floats, and work space."""
+    values = 0
+    for area in session.areas:
+        if area.recording is not None and area.contacts is not None:
+            first, last = sample_span(session.choices.trials.span_s, area.recording.rate_hz)
+            values += len(session.events) * len(area.contacts) * (last - first)
+    return _BASE_MB + 3 * 4 * values / 1e6
+
+
+def show_formats() -> None:
+    """Print the recording formats, what each carries and what the user must add."""
+    table = Table("format", "what", "carries", "needs in [[source]]")
+    for each in FORMATS.values():
+        table.add_row(each.name, each.what, ", ".join(each.carries), ", ".join(each.needs) or "-")
+    Console().print(table)
+
+
+def _sources(session: Session) -> Table:
+    table = Table("source", "clock", "rate", "channels", "duration", "runs", "amplifier")
+    seen = {area.recording.source: area.recording for area in session.areas if area.recording}
+    for name, recording in seen.items():
+        corners = recording.amplifier_hz
+        table.add_row(
+            name,
+            recording.clock,
+            f"{recording.rate_hz:g} Hz",
+            str(recording.n_channels),
+            f"{recording.duration_s:.1f} s",
+            str(len(recording.runs)),
+            f"{corners[0]:g}-{corners[1]:g} Hz" if corners else "unknown",
+        )
+    return table
+
+
+def _areas(session: Session) -> Table:
+    table = Table("area", "contacts", "depths", "bad contacts")
+    for area in session.areas:
+        if area.contacts is None:
+            table.add_row(area.name, "no LFP", "-", "-")
+            continue
+        depth = area.contacts.depth_um
+        table.add_row(
+            area.name,
+            str(len(area.contacts)),
+            f"{depth[0]:g} to {depth[-1]:g} um",
+            _bad(look_for_bad(session, area)),
+        )
+    return table
+
+
+def look_for_bad(session: Session, area: Area) -> Contacts:
+    """Return the area's contacts, bad ones marked from a few windows over the recording."""
+    assert area.contacts is not None
+    times = session.events.time_s
+    some = times[:: max(1, len(times) // _WINDOWS_LOOKED_AT)]
+    found = survey(area, some, session.choices.trials.span_s)
+    read = np.isfinite(found.step_uv).all(axis=1)
+    if not read.any():
+        return area.contacts
+    return find_bad_contacts(
+        area.contacts,
+        found.step_uv[read],
+        found.local_uv[read],
+        factor=session.choices.clean.contact_factor,
+    )
+
+
+def _bad(contacts: Contacts) -> str:
+    bad = [
+        f"{channel} ({why})"
+        for channel, why, is_bad in zip(contacts.channel, contacts.why, contacts.bad, strict=True)
+        if is_bad
+    ]
+    return "; ".join(bad) or "none"
+
+
+def _units(session: Session) -> Table:
+    table = Table("area", "units", "spikes")
+    if session.spikes is None:
+        return table
+    for area in dict.fromkeys(session.spikes.area):
+        trains = [
+            times
+            for times, where in zip(session.spikes.time_s, session.spikes.area, strict=True)
+            if where == area
+        ]
+        table.add_row(area, str(len(trains)), str(sum(map(len, trains))))
+    return table
+
+
+def _events(session: Session) -> Table:
+    table = Table("condition", "events", "left out by hand", "first", "last")
+    condition = np.array(session.events.condition)
+    dropped = session.events.dropped
+    for name in session.events.conditions:
+        rows = condition == name
+        times = session.events.time_s[rows]
+        out = int(np.count_nonzero(dropped[rows])) if dropped is not None else 0
+        table.add_row(
+            name, str(len(times)), str(out), f"{times.min():.3f} s", f"{times.max():.3f} s"
+        )
+    return table
