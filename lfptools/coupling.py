@@ -26,8 +26,8 @@ from lfptools.spike_field import (
     phase_estimates,
     phase_vectors,
 )
-from lfptools.spikes import FEW_TRIALS, SpikesAround, spikes_around
-from lfptools.trials import MIN_TRIALS, window_mask
+from lfptools.spikes import SpikesAround, spikes_around
+from lfptools.trials import FEW_TRIALS, MIN_TRIALS, window_mask
 
 #: With fewer spikes nothing is estimated.
 MIN_SPIKES = 20

@@ -11,7 +11,7 @@ from lfptools.trials import window_mask
 from lfptools.waves import Search, landmarks
 
 #: Resampled maps held at a time, in values.
-_BLOCK_VALUES = 8_000_000
+_BLOCK_VALUES = 500_000
 ONE_CONTACT = "volume conduction not excluded"
 
 

@@ -7,7 +7,6 @@ Potentials are in uV, times in s, depths in um (0 at the surface, downwards posi
 from collections.abc import Callable
 from dataclasses import dataclass, field, fields, replace
 from pathlib import Path
-from typing import Any
 
 import numpy as np
 

@@ -16,8 +16,8 @@ from lfptools.choices import Span, WindowChoice
 from lfptools.errors import InputError
 from lfptools.firing_latency import poisson_latency, why_no_latency
 from lfptools.model import CutSession
-from lfptools.spikes import FEW_TRIALS, bin_edges, binned_counts, spikes_around
-from lfptools.trials import MIN_TRIALS, window_mask
+from lfptools.spikes import bin_edges, binned_counts, spikes_around
+from lfptools.trials import FEW_TRIALS, MIN_TRIALS, window_mask
 
 #: A unit with fewer spikes in baseline and window together is not estimated.
 MIN_SPIKES = 5

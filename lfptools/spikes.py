@@ -12,11 +12,8 @@ import numpy as np
 from lfptools.checks import positive, read_only, span
 from lfptools.choices import Span
 from lfptools.errors import InputError
-from lfptools.trials import MIN_TRIALS
 
 US_PER_S = 1e6
-#: Note of a row whose condition has too few trials.
-FEW_TRIALS = f"fewer than {MIN_TRIALS} accepted trials"
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -17,6 +17,7 @@ from lfptools.model import Area, Contacts, CutSession, Recording, Session, Trial
 
 #: A condition with fewer accepted trials is not estimated.
 MIN_TRIALS = 8
+FEW_TRIALS = f"fewer than {MIN_TRIALS} accepted trials"
 
 OUTSIDE = "not whole inside the recording"
 BY_HAND = "left out by hand"

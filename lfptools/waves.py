@@ -36,7 +36,7 @@ _EMPTIED = tuple(
     for end in ends
 )
 #: Resampled curves held at a time, in values.
-_BLOCK_VALUES = 8_000_000
+_BLOCK_VALUES = 500_000
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -5,13 +5,14 @@ from itertools import combinations
 
 import numpy as np
 
-from lfptools.analysis.prepared import CHOSEN_HERE, TOO_FEW, Prepared
+from lfptools.analysis.prepared import CHOSEN_HERE, Prepared
 from lfptools.analysis.results import Row, ms, note
 from lfptools.choices import WindowChoice
 from lfptools.evoked import smooth
 from lfptools.layers import lfp_signals
 from lfptools.model import Signals
 from lfptools.resample import percentile_interval, zero_p
+from lfptools.trials import FEW_TRIALS
 from lfptools.waves import WaveEstimate, measure
 
 Key = tuple[str, str, str]  # area, condition, window
@@ -87,7 +88,7 @@ def _rows(
             "unit": signals.unit,
         }
         if estimate is None:
-            yield row | {"note": TOO_FEW}
+            yield row | {"note": FEW_TRIALS}
             continue
         for column, value in (("time", estimate.time_s), ("onset", estimate.onset_s)):
             row[f"{column}_ms"] = ms(value[index])
@@ -140,7 +141,7 @@ def _lags(
             "n_trials": int(np.count_nonzero(prepared.rows(condition))),
         }
         if a is None or b is None:
-            yield row | {"note": TOO_FEW}
+            yield row | {"note": FEW_TRIALS}
             continue
         yield (
             row

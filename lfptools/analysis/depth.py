@@ -3,12 +3,13 @@
 import numpy as np
 
 from lfptools.analysis.arrival import chosen_note
-from lfptools.analysis.prepared import TOO_FEW, Prepared
+from lfptools.analysis.prepared import Prepared
 from lfptools.analysis.results import Row, ms, note
 from lfptools.choices import WindowChoice
 from lfptools.evoked import smooth
 from lfptools.layers import SinkEstimate, layer_at, measure_sink, usable_contacts
 from lfptools.model import Trials
+from lfptools.trials import FEW_TRIALS
 from lfptools.waves import ALPHA
 
 _EXTREMUM = {"sink": "trough", "source": "peak"}
@@ -27,7 +28,7 @@ def sink_rows(prepared: Prepared) -> list[Row]:
                 for kind, extremum in _EXTREMUM.items():
                     row = _base(prepared, trials, condition, window, kind)
                     if condition not in prepared.estimated:
-                        rows.append(row | {"note": TOO_FEW})
+                        rows.append(row | {"note": FEW_TRIALS})
                         continue
                     estimate = measure_sink(
                         smoothed,

@@ -20,7 +20,6 @@ from lfptools.resample import bootstrap_weights, sign_flips
 from lfptools.trials import MIN_TRIALS
 from lfptools.waves import Search, landmarks
 
-TOO_FEW = f"fewer than {MIN_TRIALS} accepted trials"
 CHOSEN_HERE = "window chosen on these trials"
 
 

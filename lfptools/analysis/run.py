@@ -2,11 +2,11 @@
 
 import numpy as np
 
-from lfptools.analysis.arrival import lag_rows, latency_rows, measure_areas
+from lfptools.analysis.arrival import chosen_note, lag_rows, latency_rows, measure_areas
 from lfptools.analysis.depth import sink_rows
 from lfptools.analysis.lead import direction_rows, estimate_pairs, verdict_rows
 from lfptools.analysis.prepared import Prepared, prepare
-from lfptools.analysis.results import Results, Row
+from lfptools.analysis.results import Results, Row, note
 from lfptools.columns import COLUMNS
 from lfptools.coupling import coupling_rows
 from lfptools.evoked import Average, average, smooth
@@ -118,7 +118,16 @@ def _firing_rows(prepared: Prepared) -> list[Row]:
 
 
 def _named(prepared: Prepared, rows: list[Row]) -> list[Row]:
-    return [{"session": prepared.cut.name, **row} for row in rows]
+    """Add the session's name, and say so where the window was chosen on the same trials."""
+    chosen = {window.name: chosen_note(window) for window in prepared.choices.window}
+    return [
+        {
+            "session": prepared.cut.name,
+            **row,
+            "note": note(str(row.get("note", "")), chosen[str(row["window"])]),
+        }
+        for row in rows
+    ]
 
 
 def _add_q(rows: list[Row], group: str | None) -> None:

@@ -4,10 +4,11 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from lfptools.bands import why_not
 from lfptools.choices import DirectionChoice, WindowChoice
 from lfptools.direction.autoregression import lagged_products, with_ridge
 from lfptools.direction.controls import RIDGE, LeadTest, lead_test
-from lfptools.direction.cross_spectra import band_refusal, coefficients, trial_spectra
+from lfptools.direction.cross_spectra import coefficients, trial_spectra
 from lfptools.direction.granger import OneWay, band_granger, pair_contrast, pair_granger
 from lfptools.direction.phase_slope import PhaseSlope, phase_slope
 from lfptools.direction.prepare import Stretch, edge_s, orders_for, rate_for, stretch
@@ -208,9 +209,7 @@ def _by_band(
     n_rows = both.x.shape[-1] - products.shape[-1] // 2 + 1
     total = products.sum(axis=0)
     for band, edges in bands_hz.items():
-        why = band_refusal(span_s, edges)
-        if not why and edges[1] > both.rate_hz / 2:
-            why = f"the band reaches above half the rate of {both.rate_hz:g} Hz"
+        why = why_not(edges, span_s, both.rate_hz)
         if why:
             rows += [Estimate(each, band, note=why) for each in ("granger", "phase_slope")]
             slopes.append(None)
