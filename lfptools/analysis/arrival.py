@@ -27,16 +27,17 @@ def measure_areas(prepared: Prepared) -> dict[Key, WaveEstimate]:
     """Measure each window's wave in the signal that stands for each area."""
     found: dict[Key, WaveEstimate] = {}
     for area, signal in prepared.signals.items():
-        for condition, window, estimate in _measured(prepared, smooth(signal, prepared.smooth_s)):
+        for condition, window, estimate in _measured(prepared, signal):
             found[area, condition, window.name] = estimate
     return found
 
 
 def _measured(
-    prepared: Prepared, smoothed: Signals
+    prepared: Prepared, signals: Signals
 ) -> Iterator[tuple[str, WindowChoice, WaveEstimate]]:
-    for condition in prepared.estimated:
-        for window in prepared.windows_of(smoothed.area):
+    for window in prepared.windows_of(signals.area):
+        smoothed = smooth(signals, prepared.smooth_s[window.name])
+        for condition in prepared.estimated:
             estimate = measure(
                 smoothed,
                 prepared.rows(condition),

@@ -21,10 +21,10 @@ def sink_rows(prepared: Prepared) -> list[Row]:
     for trials in prepared.cut.areas:
         if trials.area not in prepared.csd:
             continue
-        smoothed = smooth(prepared.csd[trials.area], prepared.smooth_s)
         usable = usable_contacts(trials)
-        for condition in prepared.conditions:
-            for window in prepared.windows_of(trials.area):
+        for window in prepared.windows_of(trials.area):
+            smoothed = smooth(prepared.csd[trials.area], prepared.smooth_s[window.name])
+            for condition in prepared.conditions:
                 for kind, extremum in _EXTREMUM.items():
                     row = _base(prepared, trials, condition, window, kind)
                     if condition not in prepared.estimated:

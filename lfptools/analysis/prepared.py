@@ -1,8 +1,8 @@
 """A cut session in, what all analyses share out: signals, smoothing, conditions, resamples.
 
-One signal stands for each area and one smoothing serves all areas and conditions that are
-compared. Resamples and random signs are drawn once per condition and used by every analysis,
-so that differences between areas are paired on the same trials.
+One signal stands for each area, and one smoothing a window serves all areas and conditions,
+which are compared within it. Resamples and random signs are drawn once per condition and used
+by every analysis, so that differences between areas are paired on the same trials.
 """
 
 from dataclasses import dataclass, replace
@@ -36,11 +36,16 @@ class Prepared:
     operators: dict[str, CsdOperator]  # by area, where there are enough contacts
     csd: dict[str, Signals]  # by area, every depth
     signals: dict[str, Signals]  # by area, the one that stands for it
-    smooth_s: float
+    smooth_s: dict[str, float]  # SD of the Gaussian, by window
 
     def rows(self, condition: str) -> np.ndarray:
         """Bool per accepted trial."""
         return self.cut.condition == condition
+
+    @property
+    def finest_s(self) -> float:
+        """Least smoothing of any window, for curves that show all of them."""
+        return min(self.smooth_s.values(), default=0.0)
 
     def search(self, window: WindowChoice, area: str, extremum: str = "") -> Search:
         """Return where a wave is looked for in one area."""
@@ -101,7 +106,10 @@ def prepare(cut: CutSession) -> Prepared:
         operators=operators,
         csd=csd,
         signals=signals,
-        smooth_s=_smoothing(signals, cut, estimated, choices),
+        smooth_s={
+            window.name: _smoothing(signals, cut, estimated, choices, window)
+            for window in choices.window
+        },
     )
 
 
@@ -134,37 +142,35 @@ def _smoothing(
     cut: CutSession,
     estimated: tuple[str, ...],
     choices: AnalysisChoices,
+    window: WindowChoice,
 ) -> float:
-    """Return the frozen SD in s: as given, or of least risk, at most half the narrowest wave."""
+    """Return a window's frozen SD in s: as given, or of least risk and at most half its waves."""
     given = choices.latency.smooth_ms
     if given != "auto":
         return float(given) / 1000
-    if not signals or not choices.window:
+    held = {area: signal for area, signal in signals.items() if window.holds(area)}
+    if not held:
         return 0.0
-    last = max(window.span_s(area)[1] for window in choices.window for area in signals)
-    sd_s = least_risk_smoothing(list(signals.values()), cut.condition, list(estimated), (0.0, last))
-    narrowest = min(_half_widths(signals, cut, estimated, choices, sd_s), default=np.inf)
+    searches = {
+        area: Search(window.span_s(area), window.extremum_in(area), "half") for area in held
+    }
+    span_s = (
+        min(search.flank_span_s[0] for search in searches.values()),
+        max(search.prominence_span_s[1] for search in searches.values()),
+    )
+    sd_s = least_risk_smoothing(list(held.values()), cut.condition, list(estimated), span_s)
+    widths = []
+    for area, signal in held.items():
+        smoothed = smooth(signal, sd_s)
+        for name in estimated:
+            mean = smoothed.data[cut.condition == name].mean(axis=0, dtype=float)
+            widths.append(_half_width(mean, smoothed.time_s, searches[area]))
+    narrowest = np.nanmin([*widths, np.inf])
     allowed = [ms / 1000 for ms in SMOOTHING_GRID_MS if ms / 1000 <= min(sd_s, narrowest / 2)]
     return allowed[-1]
 
 
-def _half_widths(
-    signals: dict[str, Signals],
-    cut: CutSession,
-    estimated: tuple[str, ...],
-    choices: AnalysisChoices,
-    sd_s: float,
-) -> list[float]:
-    """Full width at half height of every average wave, as twice its rise from half height, s."""
-    widths = []
-    for area, signal in signals.items():
-        smoothed = smooth(signal, sd_s)
-        for window in choices.window:
-            if not window.holds(area):
-                continue
-            search = Search(window.span_s(area), window.extremum_in(area), "half")
-            for name in estimated:
-                mean = smoothed.data[cut.condition == name].mean(axis=0, dtype=float)
-                found = landmarks(mean, smoothed.time_s, search)
-                widths.append(float(2 * (found.time_s - found.onset_s)[0]))
-    return [width for width in widths if np.isfinite(width) and width > 0]
+def _half_width(mean: np.ndarray, time_s: np.ndarray, search: Search) -> float:
+    """Full width at half height of an average wave, as twice its rise from half height, s."""
+    found = landmarks(mean, time_s, search)
+    return float(2 * (found.time_s - found.onset_s)[0])

@@ -27,7 +27,7 @@ class Results:
     maps: tuple[Average, ...]  # current source density by depth, smoothed
     signal_averages: tuple[Average, ...]  # the signal that stands for each area, smoothed
     rates: tuple[RateCurve, ...]
-    smooth_s: float
+    smooth_s: dict[str, float]  # SD of the Gaussian, by window
     not_recorded: dict[str, str]  # table -> why it has no rows
 
     @property

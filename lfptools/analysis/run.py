@@ -76,7 +76,7 @@ def analyse(session: Session | CutSession, *, progress: Progress = no_progress) 
 
 
 def _smoothed(prepared: Prepared, signals: dict[str, Signals]) -> list[Signals]:
-    return [smooth(each, prepared.smooth_s) for each in signals.values()]
+    return [smooth(each, prepared.finest_s) for each in signals.values()]
 
 
 def _averages(prepared: Prepared, signals: list[Signals]) -> tuple[Average, ...]:
