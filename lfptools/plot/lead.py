@@ -8,17 +8,9 @@ from matplotlib.axes import Axes
 from lfptools.plot.lags import row_label
 from lfptools.plot.marks import Row, draw_interval, number, zero_line
 from lfptools.plot.style import PALE, Look, short
+from lfptools.plot.words import probability, verdict_words
 
 SIGN = "positive: first area leads"
-
-
-def verdict_words(row: Row) -> str:
-    """Return a verdict in words, for instance "S1 leads M1"."""
-    if row["verdict"] != "leads":
-        return str(row["verdict"])
-    leader = row["leader"]
-    follower = row["area_b"] if leader == row["area_a"] else row["area_a"]
-    return f"{leader} leads {follower}"
 
 
 def draw_leads(ax: Axes, rows: Sequence[Row], *, looks: Mapping[str, Look]) -> Axes:
@@ -65,6 +57,6 @@ def draw_leads(ax: Axes, rows: Sequence[Row], *, looks: Mapping[str, Look]) -> A
 
 
 def _beside(row: Row) -> str:
-    q = number(row, "q")
+    q = probability(number(row, "q"))
     words = short(verdict_words(row), 30)
-    return f"{words}, q = {q:.2g}" if np.isfinite(q) else words
+    return f"{words}, q = {q}" if q else words

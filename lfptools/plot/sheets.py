@@ -6,10 +6,11 @@ figure (None).
 
 from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
-from typing import cast
+from typing import Any
 
 import numpy as np
 from matplotlib import rc_context
+from matplotlib.artist import Artist
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
@@ -101,7 +102,7 @@ def waves_sheet(results: Results) -> Figure | None:
             first, last = min(s[0] for s in spans_ms), max(s[1] for s in spans_ms)
             axes[-1, column].set_xlim(first - 0.15 * (last - first), last + 0.15 * (last - first))
             axes[-1, column].set_xlabel(_TIME)
-        marks = [
+        marks: list[Artist] = [
             _mark("trough or peak, with interval", filled=True),
             _mark("onset, with interval", filled=False),
             _shade("window", SHADES[0]),
@@ -176,7 +177,7 @@ def _colour_bar(figure: Figure, axes: np.ndarray) -> None:
     mesh = next(ax.collections[0] for ax in axes if ax.collections)
     bar = figure.colorbar(mesh, ax=list(axes), aspect=12, pad=0.02)
     bar.set_label("CSD (uA/mm^3)")
-    bar.outline.set_linewidth(0.4)  # type: ignore[operator]
+    bar.outline.set_linewidth(0.4)
     bar.ax.set_title("source")
     bar.ax.text(0.5, -0.04, "sink", transform=bar.ax.transAxes, ha="center", va="top",
                 fontsize=SETTINGS["axes.titlesize"])  # fmt: skip
@@ -260,7 +261,7 @@ def lead_sheet(results: Results) -> Figure | None:
             ax.tick_params(labelbottom=True)
         for ax in axes[:-1]:
             ax.set_xlabel("")
-        marks = [
+        marks: list[Artist] = [
             _mark("claimed", filled=True),
             _mark("not claimed", filled=False),
             _shade("too small to be seen", PALE),
@@ -315,9 +316,8 @@ def _figure(height_in: float) -> Iterator[Figure]:
         yield figure
 
 
-def _grid(figure: Figure, n_rows: int, n_columns: int, **options: object) -> np.ndarray:
-    axes = figure.subplots(n_rows, n_columns, squeeze=False, **options)  # type: ignore[arg-type]
-    return cast(np.ndarray, axes)
+def _grid(figure: Figure, n_rows: int, n_columns: int, **options: Any) -> np.ndarray:
+    return figure.subplots(n_rows, n_columns, squeeze=False, **options)
 
 
 def _areas(results: Results) -> list[str]:
@@ -352,9 +352,9 @@ def _inner_labels_off(axes: np.ndarray, *, last: bool) -> None:
             ax.set_xlabel("")
 
 
-def _condition_handles(results: Results, *, trials: bool = True) -> list[Line2D | Patch]:
+def _condition_handles(results: Results, *, trials: bool = True) -> list[Artist]:
     accepted = results.cut.condition
-    handles: list[Line2D | Patch] = []
+    handles: list[Artist] = []
     for name, look in _looks(results).items():
         count = f" ({np.count_nonzero(accepted == name)} trials)" if trials else ""
         handles.append(
@@ -373,7 +373,7 @@ def _shade(label: str, colour: str) -> Patch:
     return Patch(color=colour, label=label)
 
 
-def _legend(figure: Figure, handles: Sequence[Line2D | Patch], most: int) -> None:
+def _legend(figure: Figure, handles: Sequence[Artist], most: int) -> None:
     figure.legend(
         handles=handles, loc="outside upper left", ncols=min(most, len(handles)), frameon=False
     )

@@ -1,0 +1,1 @@
+"""Results in; tables, arrays, a manifest, a methods text and a page that opens offline out."""
