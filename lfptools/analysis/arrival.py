@@ -60,7 +60,7 @@ def latency_rows(prepared: Prepared, areas: dict[Key, WaveEstimate]) -> list[Row
                 estimate = areas.get((trials.area, condition, name))
                 rows += _rows(prepared, signal, "area", condition, window, estimate)
         contacts = lfp_signals(trials)
-        for condition, window, estimate in _measured(prepared, smooth(contacts, prepared.smooth_s)):
+        for condition, window, estimate in _measured(prepared, contacts):
             rows += _rows(prepared, contacts, "contact", condition, window, estimate)
     return rows
 

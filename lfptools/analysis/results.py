@@ -1,6 +1,7 @@
 """What one analysis leaves: the tables, the curves behind the figures and how it was done."""
 
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -12,7 +13,7 @@ from lfptools.evoked import Average
 from lfptools.model import Contacts, CutSession
 from lfptools.rates import RateCurve
 
-Row = dict[str, object]
+Row = dict[str, Any]
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -1,10 +1,10 @@
 """A folder and a seed in, a simulated session with its results out, compared with its truth."""
 
 import json
+from collections import Counter, defaultdict
 from pathlib import Path
 
 import numpy as np
-import pandas as pd
 from rich.console import Console
 from rich.table import Table
 
@@ -71,17 +71,23 @@ def latency_table(results: Results, truth: dict) -> Table:
     }
     shown = Table(
         "area", "condition", "window", "trials", "trough (ms)", "planted (ms)", "depth (um)",
-        title="When each wave arrives (95 % intervals)",
+        title="When each wave arrives",
     )  # fmt: skip
-    rows = results.table("latencies")
-    for row in rows[rows["role"] == "area"].itertuples():
-        true = known[row.area, row.window, row.condition, row.signal, row.channel]
+    for row in results.rows["latencies"]:
+        if row["role"] != "area":
+            continue
+        true = known[
+            tuple(row[key] for key in ("area", "window", "condition", "signal", "channel"))
+        ]
         shown.add_row(
-            row.area, row.condition, row.window, str(row.n_trials),
-            interval(row.time_ms, row.time_lo_ms, row.time_hi_ms),
+            row["area"],
+            row["condition"],
+            row["window"],
+            str(row["n_trials"]),
+            interval(row["time_ms"], row["time_lo_ms"], row["time_hi_ms"]),
             "-" if true["trough_ms"] is None else f"{true['trough_ms']:.1f}",
-            f"{row.depth_um:g}",
-        )  # fmt: skip
+            f"{row['depth_um']:g}",
+        )
     return shown
 
 
@@ -92,32 +98,33 @@ def lag_table(results: Results, truth: dict) -> Table:
         "pair", "condition", "window", "lag (ms)", "q", "planted order",
         title="Lag of the second area's trough behind the first's",
     )  # fmt: skip
-    rows = results.table("lags")
-    for row in rows[rows["feature"] == "time"].itertuples():
-        shown.add_row(
-            f"{row.area_a}, {row.area_b}", row.condition, row.window,
-            interval(row.difference_ms, row.lo_ms, row.hi_ms), f"{row.q:.2g}",
-            ", ".join(order[row.window, row.condition]),
-        )  # fmt: skip
+    for row in results.rows["lags"]:
+        if row["feature"] == "time":
+            shown.add_row(
+                f"{row['area_a']}, {row['area_b']}",
+                row["condition"],
+                row["window"],
+                interval(row["difference_ms"], row["lo_ms"], row["hi_ms"]),
+                f"{row['q']:.2g}",
+                ", ".join(order[row["window"], row["condition"]]),
+            )
     return shown
 
 
 def firing_table(results: Results, truth: dict) -> Table:
     """Return how many units rise and fall, by area and window."""
     calls = {each["unit"]: each["calls"] for each in truth["units"]}
+    found: dict[tuple[str, str, str], Counter] = defaultdict(Counter)
+    planted: dict[tuple[str, str, str], Counter] = defaultdict(Counter)
+    for row in results.rows["firing"]:
+        key = (row["area"], row["condition"], row["window"])
+        found[key][row["call"]] += 1
+        planted[key][calls[row["unit"]][row["window"]]] += 1
     shown = Table("area", "condition", "window", "rise", "fall", "none", "planted",
                   title="What the units do (q <= .05)")  # fmt: skip
-    rows = results.table("firing")
-    for (area, condition, window), part in rows.groupby(
-        ["area", "condition", "window"], sort=False
-    ):
-        planted = pd.Series([calls[unit][window] for unit in part["unit"]]).value_counts()
-        counts = part["call"].value_counts()
-        shown.add_row(
-            area, condition, window,
-            *(str(counts.get(call, 0)) for call in ("rise", "fall", "none")),
-            ", ".join(f"{count} {call}" for call, count in planted.items()),
-        )  # fmt: skip
+    for key, counts in found.items():
+        said = ", ".join(f"{count} {call}" for call, count in planted[key].items())
+        shown.add_row(*key, *(str(counts[call]) for call in ("rise", "fall", "none")), said)
     return shown
 
 
@@ -131,14 +138,17 @@ def verdict_table(results: Results, truth: dict) -> Table:
         "pair", "condition", "window", "verdict", "net lead of the first", "q", "planted",
         title="Which area leads (net Granger causality minus that of reversed time)",
     )  # fmt: skip
-    for row in results.table("verdicts").itertuples():
-        said = f"{row.leader} leads" if row.verdict == "leads" else row.verdict
-        true = leader[row.area_a, row.area_b, row.window]
+    for row in results.rows["verdicts"]:
+        true = leader[row["area_a"], row["area_b"], row["window"]]
         shown.add_row(
-            f"{row.area_a}, {row.area_b}", row.condition, row.window, said,
-            interval(row.net, row.lo, row.hi, digits=3), f"{row.q:.2g}",
+            f"{row['area_a']}, {row['area_b']}",
+            row["condition"],
+            row["window"],
+            f"{row['leader']} leads" if row["verdict"] == "leads" else row["verdict"],
+            interval(row["net"], row["lo"], row["hi"], digits=3),
+            f"{row['q']:.2g}",
             f"{true} leads" if true else "no coupling",
-        )  # fmt: skip
+        )
     return shown
 
 
