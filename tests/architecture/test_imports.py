@@ -12,7 +12,12 @@ import pytest
 import lfptools
 
 ROOT = Path(lfptools.__file__).parent
-WIDGETS = ROOT.parent / "widgets" / "lfpwidgets"
+#: In a checkout the folder widgets/ holds it; an installed wheel has it beside lfptools.
+WIDGETS = next(
+    path
+    for path in (ROOT.parent / "widgets" / "lfpwidgets", ROOT.parent / "lfpwidgets")
+    if path.exists()
+)
 
 #: Left to right, never back. Names in one group may not import each other unless BETWEEN says so.
 ORDER = [
