@@ -13,13 +13,14 @@ import numpy as np
 
 from lfptools.analysis import Results, analyse
 from lfptools.choices import AnalysisChoices, CouplingChoice, WindowChoice
-from lfptools.model import CutSession, SpikeTrains, Trials
+from lfptools.model import CutSession, SpikeTrains, Trials, TrialTable
 from tests.spike_sessions import choices, lfp, session, stimuli_s
 
 N_TRIALS = 12  # of each condition
 RATE_HZ = 500.0
 #: Potential of the wave by depth, uV: most negative at the third contact.
 PROFILE_UV = np.array([0.0, -40.0, -100.0, -40.0, 0.0, 20.0, 10.0])
+REJECTED = "amplitude in S1"
 PEAK_S = {"S1": 0.020, "M1": 0.030}
 
 
@@ -46,10 +47,18 @@ def cut_session(
         spikes=_spikes(peaks, unit, len(condition), rng) if spikes else None,
         area_names=areas,
     )
-    reason = made.table.reason.astype(object)
-    accepted = np.ones(len(reason), dtype=bool)
-    return replace(made, name=name, table=replace(made.table, reason=np.where(accepted, reason, "")
-                                                  .astype(str)))  # fmt: skip
+    return replace(made, name=name, table=_table(condition))
+
+
+def _table(condition: list[str]) -> TrialTable:
+    """All trials accepted, and two further events that were not."""
+    n_events = len(condition) + 2
+    return TrialTable(
+        time_s=stimuli_s(n_events),
+        condition=np.array([*condition, condition[0], condition[0]]),
+        reason=np.array([""] * len(condition) + [REJECTED] * 2),
+        factors={"whisker": ("C2",) * n_events},
+    )
 
 
 def _choices(windows: tuple[str, str]) -> AnalysisChoices:
@@ -73,7 +82,9 @@ def _trials(area: str, peak_s: float, n_trials: int, rng: np.random.Generator) -
     found = lfp(data_uv, rate_hz=RATE_HZ, first_s=-0.2, area=area)
     return replace(
         found,
-        contacts=found.contacts.mark(3, "dead: steps of 0.1 uV") if area != "M1" else found.contacts,
+        contacts=found.contacts.mark(3, "dead: steps of 0.1 uV")
+        if area != "M1"
+        else found.contacts,
         layers={"L23": (50.0, 250.0), "L4": (250.0, 450.0)},
     )
 

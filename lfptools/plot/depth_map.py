@@ -82,7 +82,8 @@ def draw_depth_map(
     ax.set_xlabel("time after the stimulus (ms)")
     ax.set_ylabel("depth (um)")
     ax.set_title(
-        f"{short(average.area)}, {short(average.condition)} ({average.n_trials} trials)", loc="left"
+        f"{short(average.area, 12)}, {short(average.condition, 16)} ({average.n_trials} trials)",
+        loc="left",
     )
     return ax
 

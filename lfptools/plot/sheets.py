@@ -4,17 +4,13 @@ No pyplot: figures belong to nobody but the caller. What a session did not recor
 figure (None).
 """
 
-from collections.abc import Callable, Iterator, Sequence
-from contextlib import contextmanager
-from typing import Any
+from collections.abc import Callable, Sequence
 
 import numpy as np
-from matplotlib import rc_context
 from matplotlib.artist import Artist
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
-from matplotlib.patches import Patch
 
 from lfptools.analysis.results import Results
 from lfptools.evoked import Average
@@ -22,16 +18,28 @@ from lfptools.plot.averages import draw_averages
 from lfptools.plot.contacts import draw_contacts
 from lfptools.plot.depth_map import draw_depth_map
 from lfptools.plot.firing import draw_raster, draw_rates
-from lfptools.plot.lags import draw_lags
+from lfptools.plot.lags import draw_lags, row_label
+from lfptools.plot.layout import (
+    condition_handles,
+    fit_titles,
+    is_first_column,
+    legend,
+    mark_handle,
+    n_rows_of,
+    page_figure,
+    panels,
+    shade_handle,
+)
 from lfptools.plot.lead import draw_leads
 from lfptools.plot.marks import Row, Spans, chosen, number
-from lfptools.plot.style import INK, PALE, SETTINGS, SHADES, WIDTH_IN, Look, looks, short
+from lfptools.plot.style import INK, PALE, SETTINGS, SHADES, Look, looks, short
 from lfptools.rates import spike_raster
 
 #: What is shown around the windows.
 _MARGIN_MS = 50.0
-_MOST_COLUMNS = 3
 _TIME = "time after the stimulus (ms)"
+#: Lags of two windows stand side by side where the labels are at most this long.
+_SIDE_BY_SIDE = 24
 
 
 def shown_span_ms(results: Results) -> tuple[float, float]:
@@ -54,17 +62,11 @@ def shown_unit(results: Results, area: str) -> int | None:
     spikes = results.cut.spikes
     if spikes is None or area not in spikes.area:
         return None
-    counts = np.zeros(len(spikes))
-    for row in chosen(results.rows["firing"], area=area):
-        counts[_unit_number(results, row)] += number(row, "n_spikes")
+    counts = dict.fromkeys(zip(spikes.area, spikes.unit, strict=True), 0.0)
+    for row in results.rows["firing"]:
+        counts[str(row["area"]), str(row["unit"])] += number(row, "n_spikes")
     mine = [index for index, where in enumerate(spikes.area) if where == area]
-    return max(mine, key=lambda index: (counts[index], -index))
-
-
-def _unit_number(results: Results, row: Row) -> int:
-    assert results.cut.spikes is not None
-    names = zip(results.cut.spikes.area, results.cut.spikes.unit, strict=True)
-    return list(names).index((row["area"], row["unit"]))
+    return max(mine, key=lambda index: (counts[area, spikes.unit[index]], -index))
 
 
 def averages_sheet(results: Results) -> Figure | None:
@@ -72,13 +74,13 @@ def averages_sheet(results: Results) -> Figure | None:
     areas = _areas(results)
     if not areas:
         return None
-    with _figure(1.55 * len(areas) + 0.7) as figure:
-        axes = _grid(figure, len(areas), 1, sharex=True)[:, 0]
+    with page_figure(1.55 * len(areas) + 0.7) as figure:
+        axes = panels(figure, len(areas), 1, sharex=True)[:, 0]
         for index, (ax, area) in enumerate(zip(axes, areas, strict=True)):
             _one_average(results, ax, area, _spans_ms(results, area), name_windows=index == 0)
         axes[0].set_xlim(shown_span_ms(results))
         axes[-1].set_xlabel(_TIME)
-        _legend(figure, [*_condition_handles(results), _shade("window", SHADES[0])], 3)
+        legend(figure, [*_conditions(results), shade_handle("window", SHADES[0])])
         return figure
 
 
@@ -87,27 +89,30 @@ def waves_sheet(results: Results) -> Figure | None:
     areas, windows = _areas(results), results.choices.window
     if not areas or not windows:
         return None
-    with _figure(1.55 * len(areas) + 0.7) as figure:
-        axes = _grid(figure, len(areas), len(windows), sharex="col")
-        for row, area in enumerate(areas):
-            for column, window in enumerate(windows):
-                ax = axes[row, column]
-                spans = {window.name: _ms(window.span_s(area))} if window.holds(area) else {}
-                _one_average(results, ax, area, spans, name_windows=False)
-                if column:
-                    ax.set_ylabel("")
-                ax.set_title(f"{short(area)}, {short(window.name)}", loc="left")
+    n_rows = n_rows_of(len(areas), len(windows))
+    with page_figure(1.6 * n_rows + 0.7) as figure:
+        axes = panels(figure, len(areas), len(windows))
         for column, window in enumerate(windows):
             spans_ms = [_ms(window.span_s(area)) for area in areas]
             first, last = min(s[0] for s in spans_ms), max(s[1] for s in spans_ms)
-            axes[-1, column].set_xlim(first - 0.15 * (last - first), last + 0.15 * (last - first))
-            axes[-1, column].set_xlabel(_TIME)
+            margin = 0.15 * (last - first)
+            for row, (area, span_ms) in enumerate(zip(areas, spans_ms, strict=True)):
+                ax = axes[row, column]
+                held = {window.name: span_ms} if window.holds(area) else {}
+                _one_average(results, ax, area, held, name_windows=False)
+                ax.set_xlim(first - margin, last + margin)
+                ax.set_title(f"{short(area)}, {short(window.name)}", loc="left")
+                if not is_first_column(column, len(windows)):
+                    ax.set_ylabel("")
+                if row == len(areas) - 1:
+                    ax.set_xlabel(_TIME)
+        fit_titles(axes)
         marks: list[Artist] = [
-            _mark("trough or peak, with interval", filled=True),
-            _mark("onset, with interval", filled=False),
-            _shade("window", SHADES[0]),
+            mark_handle("trough or peak, with interval", filled=True),
+            mark_handle("onset, with interval", filled=False),
+            shade_handle("window", SHADES[0]),
         ]
-        _legend(figure, [*_condition_handles(results), *marks], 3)
+        legend(figure, [*_conditions(results), *marks])
         return figure
 
 
@@ -137,35 +142,44 @@ def depth_sheet(results: Results) -> Figure | None:
     if not areas:
         return None
     conditions = list(dict.fromkeys(each.condition for each in results.maps))
-    with _figure(2.15 * len(areas) + 0.5) as figure:
-        axes = _grid(figure, len(areas), len(conditions), sharex=True, sharey="row")
-        span_ms = shown_span_ms(results)
-        axes[0, 0].set_xlim(span_ms)
+    with page_figure(2.15 * n_rows_of(len(areas), len(conditions)) + 0.5) as figure:
+        axes = panels(figure, len(areas), len(conditions), sharex=True)
+        axes[0, 0].set_xlim(shown_span_ms(results))
         for row, area in enumerate(areas):
             maps = [each for each in results.maps if each.area == area]
-            limit = max(float(np.abs(each.mean[:, _inside(each, span_ms)]).max()) for each in maps)
-            for average in maps:
-                ax = axes[row, conditions.index(average.condition)]
-                trials = results.cut.trials_of(area)
-                assert trials is not None
-                draw_depth_map(
-                    ax,
-                    average,
-                    chosen(results.rows["sinks"], area=area, condition=average.condition),
-                    contacts=trials.contacts,
-                    layers=trials.layers,
-                    limit=limit or 1.0,
-                )
-            _inner_labels_off(axes[row], last=row == len(areas) - 1)
+            _maps_of_area(results, maps, axes[row, [conditions.index(m.condition) for m in maps]])
+            for column, ax in enumerate(axes[row]):
+                if not is_first_column(column, len(conditions)):
+                    ax.set_ylabel("")
+                    ax.tick_params(labelleft=False)
+                if row < len(areas) - 1:
+                    ax.set_xlabel("")
             _colour_bar(figure, axes[row])
-        handles = [
+        fit_titles(axes)
+        handles: list[Artist] = [
             Line2D([], [], marker="o", color=INK, mfc="white", label="strongest sink of a window"),
             Line2D([], [], marker="x", ls="none", color=INK, label="bad contact, filled in"),
         ]
         if any(each.layers for each in results.cut.areas):
             handles.append(Line2D([], [], color=INK, ls=":", lw=0.7, label="border of a layer"))
-        _legend(figure, handles, 3)
+        legend(figure, handles)
         return figure
+
+
+def _maps_of_area(results: Results, maps: Sequence[Average], axes: np.ndarray) -> None:
+    trials = results.cut.trials_of(maps[0].area)
+    assert trials is not None
+    span_ms = shown_span_ms(results)
+    limit = max(float(np.abs(each.mean[:, _inside(each, span_ms)]).max()) for each in maps)
+    for average, ax in zip(maps, axes, strict=True):
+        draw_depth_map(
+            ax,
+            average,
+            chosen(results.rows["sinks"], area=average.area, condition=average.condition),
+            contacts=trials.contacts,
+            layers=trials.layers,
+            limit=limit or 1.0,
+        )
 
 
 def _inside(average: Average, span_ms: tuple[float, float]) -> np.ndarray:
@@ -188,24 +202,25 @@ def firing_sheet(results: Results) -> Figure | None:
     areas = list(dict.fromkeys(each.area for each in results.rates))
     if not areas:
         return None
-    n_columns = min(len(areas), _MOST_COLUMNS)
-    n_blocks = -(-len(areas) // n_columns)
-    with _figure(3.6 * n_blocks + 0.5) as figure:
-        axes = _grid(
-            figure, 2 * n_blocks, n_columns, sharex=True, height_ratios=[1.0, 1.3] * n_blocks
-        )
+    n_rows = n_rows_of(1, len(areas))
+    with page_figure(3.6 * n_rows + 0.5) as figure:
+        # One group a row of areas: rates, then rasters.
+        n_columns = -(-len(areas) // n_rows)
+        axes = panels(figure, 2 * n_rows, n_columns, sharex=True,
+                      height_ratios=[1.0, 1.3] * n_rows)  # fmt: skip
         axes[0, 0].set_xlim(shown_span_ms(results))
         for index, area in enumerate(areas):
-            block, column = divmod(index, n_columns)
-            _one_firing(results, area, axes[2 * block, column], axes[2 * block + 1, column])
+            row, column = divmod(index, n_columns)
+            pair = axes[2 * row : 2 * row + 2, column]
+            _one_firing(results, area, *pair)
             if column:
-                axes[2 * block, column].set_ylabel("")
-                axes[2 * block + 1, column].set_ylabel("")
-        for spare in range(len(areas), n_blocks * n_columns):
-            block, column = divmod(spare, n_columns)
-            axes[2 * block, column].set_axis_off()
-            axes[2 * block + 1, column].set_axis_off()
-        _legend(figure, [*_condition_handles(results), _shade("window", SHADES[0])], 3)
+                for ax in pair:
+                    ax.set_ylabel("")
+        for spare in range(len(areas), n_rows * n_columns):
+            for ax in axes[-2:, spare % n_columns]:
+                ax.set_axis_off()
+        fit_titles(axes)
+        legend(figure, [*_conditions(results), shade_handle("window", SHADES[0])])
         return figure
 
 
@@ -233,18 +248,17 @@ def lag_sheet(results: Results) -> Figure | None:
     if not by_window:
         return None
     n_lines = max(len(rows) for rows in by_window) / 2
-    n_columns = min(len(by_window), 2)
-    n_rows = -(-len(by_window) // n_columns)
-    with _figure(n_rows * (0.32 * n_lines + 0.9) + 0.4) as figure:
-        axes = _grid(figure, n_rows, n_columns)
-        for ax, rows in zip(axes.flat, by_window, strict=False):
+    longest = max(len(row_label(row)) for rows in by_window for row in rows)
+    most = 2 if longest <= _SIDE_BY_SIDE else 1
+    n_rows = n_rows_of(1, len(by_window), most=most)
+    with page_figure(n_rows * (0.32 * n_lines + 0.9) + 0.4) as figure:
+        axes = panels(figure, 1, len(by_window), most=most)
+        for index, (ax, rows) in enumerate(zip(axes[0], by_window, strict=True)):
             draw_lags(ax, rows, looks=_looks(results))
-        for ax in axes.flat[len(by_window) :]:
-            ax.set_axis_off()
-        for ax in axes[:, 1:].flat:
-            ax.set_ylabel("")
-        marks = [_mark("trough or peak", filled=True), _mark("onset", filled=False)]
-        _legend(figure, [*_condition_handles(results, trials=False), *marks], 4)
+            if not is_first_column(index, len(by_window), most=most):
+                ax.set_ylabel("")
+        marks = [mark_handle("trough or peak", filled=True), mark_handle("onset", filled=False)]
+        legend(figure, [*condition_handles(_looks(results)), *marks])
         return figure
 
 
@@ -254,19 +268,19 @@ def lead_sheet(results: Results) -> Figure | None:
     if not by_window:
         return None
     heights = [0.26 * len(rows) + 0.75 for rows in by_window]
-    with _figure(sum(heights) + 0.4) as figure:
-        axes = _grid(figure, len(by_window), 1, height_ratios=heights, sharex=True)[:, 0]
+    with page_figure(sum(heights) + 0.4) as figure:
+        axes = panels(figure, len(by_window), 1, height_ratios=heights, sharex=True)[:, 0]
         for ax, rows in zip(axes, by_window, strict=True):
             draw_leads(ax, rows, looks=_looks(results))
             ax.tick_params(labelbottom=True)
         for ax in axes[:-1]:
             ax.set_xlabel("")
         marks: list[Artist] = [
-            _mark("claimed", filled=True),
-            _mark("not claimed", filled=False),
-            _shade("too small to be seen", PALE),
+            mark_handle("claimed", filled=True),
+            mark_handle("not claimed", filled=False),
+            shade_handle("too small to be seen", PALE),
         ]
-        _legend(figure, [*_condition_handles(results, trials=False), *marks], 5)
+        legend(figure, [*condition_handles(_looks(results)), *marks])
         return figure
 
 
@@ -276,9 +290,8 @@ def contact_sheet(results: Results) -> Figure | None:
     areas, windows = _areas(results), results.choices.window
     if not rows or not windows:
         return None
-    n_columns = len(areas)
-    with _figure(2.2 * len(windows) + 0.5) as figure:
-        axes = _grid(figure, len(windows), n_columns, sharey="col")
+    with page_figure(2.2 * n_rows_of(len(windows), len(areas)) + 0.5) as figure:
+        axes = panels(figure, len(windows), len(areas))
         for row, window in enumerate(windows):
             for column, area in enumerate(areas):
                 ax = axes[row, column]
@@ -287,11 +300,14 @@ def contact_sheet(results: Results) -> Figure | None:
                     ax.set_axis_off()
                     continue
                 draw_contacts(ax, mine, looks=_looks(results))
-                if column:
+                if not is_first_column(column, len(areas)):
                     ax.set_ylabel("")
-        marks = [_mark("trough or peak, with interval", filled=True),
-                 _mark("not reliable", filled=False)]  # fmt: skip
-        _legend(figure, [*_condition_handles(results, trials=False), *marks], 4)
+        fit_titles(axes)
+        marks = [
+            mark_handle("trough or peak, with interval", filled=True),
+            mark_handle("not reliable", filled=False),
+        ]
+        legend(figure, [*condition_handles(_looks(results)), *marks])
         return figure
 
 
@@ -307,25 +323,20 @@ SHEETS: dict[str, Callable[[Results], Figure | None]] = {
 }
 
 
-@contextmanager
-def _figure(height_in: float) -> Iterator[Figure]:
-    """Yield a figure; what is drawn inside the block has the sizes of `style`."""
-    with rc_context(SETTINGS):
-        figure = Figure(figsize=(WIDTH_IN, height_in))
-        figure.set_layout_engine("constrained", w_pad=0.1, h_pad=0.05)
-        yield figure
-
-
-def _grid(figure: Figure, n_rows: int, n_columns: int, **options: Any) -> np.ndarray:
-    return figure.subplots(n_rows, n_columns, squeeze=False, **options)
-
-
 def _areas(results: Results) -> list[str]:
     return list(dict.fromkeys(each.area for each in results.signal_averages))
 
 
 def _looks(results: Results) -> dict[str, Look]:
     return looks(results.cut.table.conditions)
+
+
+def _conditions(results: Results) -> list[Artist]:
+    """Return legend handles of the conditions with their counts of accepted trials."""
+    accepted = results.cut.condition
+    names = results.cut.table.conditions
+    counts = {name: int(np.count_nonzero(accepted == name)) for name in names}
+    return condition_handles(_looks(results), counts)
 
 
 def _ms(span_s: tuple[float, float]) -> tuple[float, float]:
@@ -342,38 +353,3 @@ def _spans_ms(results: Results, area: str) -> Spans:
 
 def _by_window(rows: Sequence[Row]) -> list[list[Row]]:
     return [chosen(rows, window=name) for name in dict.fromkeys(str(row["window"]) for row in rows)]
-
-
-def _inner_labels_off(axes: np.ndarray, *, last: bool) -> None:
-    for index, ax in enumerate(axes):
-        if index:
-            ax.set_ylabel("")
-        if not last:
-            ax.set_xlabel("")
-
-
-def _condition_handles(results: Results, *, trials: bool = True) -> list[Artist]:
-    accepted = results.cut.condition
-    handles: list[Artist] = []
-    for name, look in _looks(results).items():
-        count = f" ({np.count_nonzero(accepted == name)} trials)" if trials else ""
-        handles.append(
-            Line2D([], [], color=look.colour, ls=look.line, marker=look.marker,
-                   label=f"{short(name)}{count}")
-        )  # fmt: skip
-    return handles
-
-
-def _mark(label: str, *, filled: bool) -> Line2D:
-    face = INK if filled else "white"
-    return Line2D([], [], ls="none", marker="o", color=INK, mfc=face, label=label)
-
-
-def _shade(label: str, colour: str) -> Patch:
-    return Patch(color=colour, label=label)
-
-
-def _legend(figure: Figure, handles: Sequence[Artist], most: int) -> None:
-    figure.legend(
-        handles=handles, loc="outside upper left", ncols=min(most, len(handles)), frameon=False
-    )

@@ -20,8 +20,8 @@ def rounded(value: float, places: int) -> str:
 def with_interval(value: float, lo: float, hi: float, unit: str = "") -> str:
     """Return "14.1 ms [13.7, 14.5]", with the decimals that the interval's width bears.
 
-    Half the width keeps one digit, or two where it begins with 1 or 2. Without an interval the value keeps 3 digits and
-    says so; without a value the text is empty.
+    Half the width keeps one digit, or two where it begins with 1 or 2. Without an interval the
+    value keeps 3 digits and says so; without a value the text is empty.
     """
     if not isfinite(value):
         return ""

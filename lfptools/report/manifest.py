@@ -60,7 +60,7 @@ def manifest(
             {"name": each.name, "span_ms": list(each.span_ms), "chosen": each.chosen}
             for each in results.choices.window
         ],
-        "smoothing_sd_ms": round(1000 * results.smooth_s, 6),
+        "smoothing_sd_ms": {name: round(1000 * sd_s, 6) for name, sd_s in results.smooth_s.items()},
         "signals": signals(results),
         "bad_contacts": bad_contacts(results),
         "trials": trial_counts(results),

@@ -96,12 +96,17 @@ def _signals(results: Results) -> Part | None:
         f"{each['area']}: {each['signal'].upper()} at {each['depth_um']:g} um" for each in found
     )
     auto = results.choices.latency.smooth_ms == "auto"
-    how = "chosen once for all areas and conditions by least estimated risk" if auto else "as set"
+    how = "one a window for all areas and conditions, by least estimated risk" if auto else "as set"
+    widths = ", ".join(f"{name} {1000 * sd_s:g} ms" for name, sd_s in results.smooth_s.items())
     text = (
         f"One signal stood for each area ({listed}), chosen once from the average over all "
-        "conditions and windows. It was smoothed with a zero-phase Gaussian of "
-        f"{1000 * results.smooth_s:g} ms standard deviation ({how})."
+        "conditions and windows."
     )
+    if widths:
+        text += (
+            " It was smoothed without delay by a Gaussian whose leading bias was taken off "
+            f"(standard deviation: {widths}; {how})."
+        )
     return text, ()
 
 
@@ -194,7 +199,8 @@ def _direction(results: Results) -> Part | None:
     text = (
         "Direction was estimated on trials without their ensemble mean"
         + ("" if kept else ", gain and shift of the evoked response projected out of each")
-        + ", areas at one rate through the same filter, by Granger causality (Geweke 1982; largest autoregressive order "
+        + ", areas at one rate through the same filter, by Granger causality (Geweke 1982; "
+        "largest autoregressive order "
         f"{', '.join(map(str, orders))}) minus that of reversed time (Haufe et al. 2013; Winkler "
         f"et al. 2016). A lead is claimed where {results.choices.resample.n} random time "
         "reversals of trials give q <= .05 (Benjamini and Hochberg 1995) and the net changes sign "

@@ -84,7 +84,7 @@ def _rows(results: Results, name: str) -> list[Row]:
 
 
 def _areas(results: Results, account: Mapping[str, Any]) -> PageTable:
-    """What was recorded in each area."""
+    """Return what was recorded in each area."""
     signals = {each["area"]: each for each in account["signals"]}
     spikes = results.cut.spikes
     rows = []
@@ -110,7 +110,7 @@ def _areas(results: Results, account: Mapping[str, Any]) -> PageTable:
 
 
 def _conditions(account: Mapping[str, Any]) -> PageTable:
-    """Trials by condition."""
+    """Return the trials by condition."""
     counts = account["trials"]
     rows = tuple(
         (name, str(n_events), str(counts["accepted_by_condition"][name]))

@@ -56,7 +56,9 @@ def _order(results: Results, rows: list[Row]) -> str:
     text = ""
     for index, row in enumerate(found):
         if index:
-            text += " before " if _apart(results, found[index - 1], row) else " and, not told apart, "
+            text += (
+                " before " if _apart(results, found[index - 1], row) else " and, not told apart, "
+            )
         text += f"{row['area']} {cell(row, 'time_ms', 'time_lo_ms', 'time_hi_ms', 'ms')}"
         text += " (not reliable)" if str(row["note"]).startswith("not reliable") else ""
     missing = [f"{row['area']}: {row['note']}" for row in rows if row not in found]

@@ -47,7 +47,8 @@ SECTIONS = (
         how="Each curve is the mean over the trials of a condition; its band covers the mean at "
         "each sample by itself. Filled marks: trough or peak; open marks: onset, where the flank "
         "crosses the stated fraction of it; bars along time: intervals from resampled trials. "
-        "Sinks are negative.",
+        "Sinks are negative. The curves carry the least smoothing of any window, the marks that "
+        "of their own.",
         limits="The onset is that of the stated fraction and not the physical beginning of the "
         "current; waves of unequal shape differ in it without differing in arrival. A wave that "
         "is not found may still be there, too small for these trials.",

@@ -1,0 +1,58 @@
+"""The methods text names this run's numbers and the methods it used, no others."""
+
+from dataclasses import replace
+
+import msgspec
+
+from lfptools.choices import DirectionChoice, LatencyChoice
+from lfptools.report.methods import REFERENCES, methods
+from tests.report_sessions import N_TRIALS, REJECTED, results
+
+
+def _cited(text: str) -> set[str]:
+    return {key for key, reference in REFERENCES.items() if f"- {reference}" in text}
+
+
+def test_numbers_are_those_of_the_run():
+    text = methods(results())
+    assert f"{2 * N_TRIALS + 2} stimuli, {2 * N_TRIALS} accepted trials" in text
+    assert f"rejected: {REJECTED}: 2" in text
+    assert "from -200 to 300 ms" in text
+    assert "early 5 to 60 ms, trough" in text
+    assert "S1: CSD at 200 um" in text
+    assert "50 % of it" in text
+    assert "(0.3 S/m)" in text
+    assert "Seed 1;" in text
+
+
+def test_each_reference_is_cited_in_the_text():
+    text = methods(results())
+    body = text.partition("## References")[0]
+    for key in _cited(text):
+        name = REFERENCES[key].split()[0]
+        assert name in body, key
+    assert len(_cited(text)) >= 10
+
+
+def test_only_methods_that_were_used_are_cited():
+    spikes_only = _cited(methods(results(with_lfp=False)))
+    assert {"poisson", "fdr", "bootstrap"} <= spikes_only
+    assert not {"csd", "ends", "granger", "reversal", "ppc", "phase_slope"} & spikes_only
+    lfp_only = _cited(methods(results(spikes=False)))
+    assert {"csd", "ends", "granger", "reversal", "bootstrap"} <= lfp_only
+    assert not {"poisson", "ppc"} & lfp_only
+    one_area = _cited(methods(results(areas=("S1",), spikes=False)))
+    assert one_area == {"bootstrap", "csd", "ends"}
+
+
+def test_other_choices_change_the_text():
+    choices = msgspec.structs.replace(
+        results().choices,
+        latency=LatencyChoice(onset="quarter", smooth_ms=2.0),
+        direction=DirectionChoice(single_trial="keep"),
+    )
+    text = methods(replace(results(), choices=choices))
+    assert "25 % of it" in text
+    assert "as set" in text
+    assert "projected out" not in text
+    assert "projected out" in methods(results())
