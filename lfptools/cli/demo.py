@@ -5,6 +5,7 @@ from collections import Counter, defaultdict
 from pathlib import Path
 
 import numpy as np
+from rich.box import SIMPLE_HEAD
 from rich.console import Console
 from rich.table import Table
 
@@ -63,15 +64,23 @@ def run_demo(*, out: Path | None, seed: int, quiet: bool) -> Path:
     return page
 
 
+def _table(title: str, *columns: str) -> Table:
+    """Return an empty table that fits 80 columns without broken lines."""
+    shown = Table(title=title, title_justify="left", box=SIMPLE_HEAD, padding=0)
+    for name in columns:
+        shown.add_column(name, no_wrap=True)
+    return shown
+
+
 def latency_table(results: Results, truth: dict) -> Table:
     """Return troughs of each area's signal beside the planted ones."""
     known = {
         (each["area"], each["window"], each["condition"], each["signal"], each["channel"]): each
         for each in truth["latencies"]
     }
-    shown = Table(
-        "area", "condition", "window", "trials", "trough (ms)", "planted (ms)", "depth (um)",
-        title="When each wave arrives",
+    shown = _table(
+        "When each wave arrives, with 95 % intervals",
+        "area", "condition", "window", "trials", "trough (ms)", "planted", "depth (um)",
     )  # fmt: skip
     for row in results.rows["latencies"]:
         if row["role"] != "area":
@@ -94,9 +103,9 @@ def latency_table(results: Results, truth: dict) -> Table:
 def lag_table(results: Results, truth: dict) -> Table:
     """Return lags of the troughs beside the planted order."""
     order = {(each["window"], each["condition"]): each["areas"] for each in truth["orders"]}
-    shown = Table(
-        "pair", "condition", "window", "lag (ms)", "q", "planted order",
-        title="Lag of the second area's trough behind the first's",
+    shown = _table(
+        "Lag of the second area's trough behind the first's",
+        "pair", "condition", "window", "trials", "lag (ms)", "q", "planted order",
     )  # fmt: skip
     for row in results.rows["lags"]:
         if row["feature"] == "time":
@@ -104,6 +113,7 @@ def lag_table(results: Results, truth: dict) -> Table:
                 f"{row['area_a']}, {row['area_b']}",
                 row["condition"],
                 row["window"],
+                str(row["n_trials"]),
                 interval(row["difference_ms"], row["lo_ms"], row["hi_ms"]),
                 f"{row['q']:.2g}",
                 ", ".join(order[row["window"], row["condition"]]),
@@ -120,8 +130,10 @@ def firing_table(results: Results, truth: dict) -> Table:
         key = (row["area"], row["condition"], row["window"])
         found[key][row["call"]] += 1
         planted[key][calls[row["unit"]][row["window"]]] += 1
-    shown = Table("area", "condition", "window", "rise", "fall", "none", "planted",
-                  title="What the units do (q <= .05)")  # fmt: skip
+    shown = _table(
+        "How many units rise or fall (q <= .05)",
+        "area", "condition", "window", "rise", "fall", "none", "planted",
+    )  # fmt: skip
     for key, counts in found.items():
         said = ", ".join(f"{count} {call}" for call, count in planted[key].items())
         shown.add_row(*key, *(str(counts[call]) for call in ("rise", "fall", "none")), said)
@@ -134,9 +146,9 @@ def verdict_table(results: Results, truth: dict) -> Table:
         (each["area_a"], each["area_b"], each["window"]): each["leader"]
         for each in truth["coupling"]
     }
-    shown = Table(
-        "pair", "condition", "window", "verdict", "net lead of the first", "q", "planted",
-        title="Which area leads (net Granger causality minus that of reversed time)",
+    shown = _table(
+        "Which area leads (net Granger causality minus that of reversed time)",
+        "pair", "condition", "window", "verdict", "net, first leads", "q", "planted",
     )  # fmt: skip
     for row in results.rows["verdicts"]:
         true = leader[row["area_a"], row["area_b"], row["window"]]
@@ -145,9 +157,9 @@ def verdict_table(results: Results, truth: dict) -> Table:
             row["condition"],
             row["window"],
             f"{row['leader']} leads" if row["verdict"] == "leads" else row["verdict"],
-            interval(row["net"], row["lo"], row["hi"], digits=3),
+            interval(row["net"], row["lo"], row["hi"], digits=2),
             f"{row['q']:.2g}",
-            f"{true} leads" if true else "no coupling",
+            f"{true} leads" if true else "none",
         )
     return shown
 
@@ -156,4 +168,6 @@ def interval(value: float, lo: float, hi: float, digits: int = 1) -> str:
     """Return "value [lo, hi]", or a dash where there is none."""
     if not np.isfinite(value):
         return "-"
-    return f"{value:.{digits}f} [{lo:.{digits}f}, {hi:.{digits}f}]"
+    # Adding 0 after rounding turns -0.00 into 0.00.
+    at, low, high = (round(each, digits) + 0.0 for each in (value, lo, hi))
+    return f"{at:.{digits}f} [{low:.{digits}f}, {high:.{digits}f}]"
