@@ -157,7 +157,7 @@ def verdict_table(results: Results, truth: dict) -> Table:
             row["condition"],
             row["window"],
             f"{row['leader']} leads" if row["verdict"] == "leads" else row["verdict"],
-            interval(row["net"], row["lo"], row["hi"], digits=2),
+            interval(row["net"], row["lo"], row["hi"], digits=3),
             f"{row['q']:.2g}",
             f"{true} leads" if true else "none",
         )
