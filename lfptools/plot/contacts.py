@@ -18,7 +18,7 @@ def draw_contacts(ax: Axes, rows: Sequence[Row], *, looks: Mapping[str, Look]) -
         Where to draw.
     rows : sequence of rows
         Of latencies.csv, role "contact", one area and window. Contacts without a wave are
-        left out; those that are not reliable have open markers and may reach beyond the
+        left out; those that are not reliable have open markers and may lie beyond the
         axis. Conditions stand a little above one another at the same contact.
     looks : mapping of condition to Look
 
@@ -54,11 +54,9 @@ def _reliable(row: Row) -> bool:
 
 
 def _fit_time(ax: Axes, rows: Sequence[Row]) -> None:
-    """Let the axis hold every time and the reliable intervals: no vague one flattens the rest."""
-    shown = [number(row, "time_ms") for row in rows]
-    for row in rows:
-        if _reliable(row):
-            shown += [number(row, "time_lo_ms"), number(row, "time_hi_ms")]
+    """Let the axis hold the reliable times and intervals, so that no vague one flattens them."""
+    held = [row for row in rows if _reliable(row)] or rows
+    shown = [number(row, key) for row in held for key in ("time_ms", "time_lo_ms", "time_hi_ms")]
     known = [each for each in shown if np.isfinite(each)]
     if known:
         margin = 0.15 * (max(known) - min(known)) or 1.0

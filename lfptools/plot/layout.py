@@ -16,9 +16,9 @@ from lfptools.plot.style import INK, SETTINGS, WIDTH_IN, Look, short
 #: More panels side by side than this could not be read.
 MOST_COLUMNS = 3
 #: Letters of a title and of a legend that fit across the page.
-_TITLE_LETTERS, _LEGEND_LETTERS = 72, 105
+_TITLE_LETTERS, _LEGEND_LETTERS = 72, 108
 #: Room that a legend's handle takes, in letters.
-_HANDLE_LETTERS = 8
+_HANDLE_LETTERS = 9
 
 
 @contextmanager
@@ -92,8 +92,11 @@ def shade_handle(label: str, colour: str) -> Patch:
 
 def legend(figure: Figure, handles: Sequence[Artist]) -> None:
     """Put a legend above all panels, as many columns as the page is wide."""
-    longest = max(len(str(each.get_label())) for each in handles)
-    fitting = max(1, _LEGEND_LETTERS // (longest + _HANDLE_LETTERS))
-    figure.legend(
-        handles=handles, loc="outside upper left", ncols=min(fitting, len(handles)), frameon=False
+    lengths = [len(str(each.get_label())) + _HANDLE_LETTERS for each in handles]
+    fitting = (
+        n_columns
+        for n_columns in range(len(lengths), 0, -1)
+        # A legend is filled column by column.
+        if sum(max(part) for part in np.array_split(lengths, n_columns)) <= _LEGEND_LETTERS
     )
+    figure.legend(handles=handles, loc="outside upper left", ncols=next(fitting, 1), frameon=False)

@@ -85,8 +85,8 @@ SECTIONS = (
         tables=("sinks", "contacts"),
         how="The surface is up. Orange: sinks (negative), purple: sources, in uA/mm^3, one scale "
         "an area. Circles: strongest sink of each window, bars: intervals of its depth and time. "
-        "Crosses: bad contacts, filled in along depth. In the lower figure intervals that are not "
-        "reliable may reach beyond the axis.",
+        "Crosses: bad contacts, filled in along depth. In the lower figure open marks are not "
+        "reliable and may lie beyond the axis.",
         limits="The density supposes currents that spread widely at right angles to the array and "
         "an even conductivity; at the array's ends it rests on a duplicated contact. A sink is "
         "where current enters, not proof of a synapse there.",
@@ -130,6 +130,7 @@ SECTIONS = (
         how="Net is Granger causality from the first area to the second minus the reverse, minus "
         "the same in reversed time; positive: the first area leads. A lead is claimed where "
         "random time reversal of trials gives q <= .05 and the net changes sign in reversed time. "
+        "The interval is not that test and may hold 0 beside a lead that is claimed. "
         "Pale bars: net values that these trials would have missed in more than 20 % of cases.",
         limits="No lead shown is not no lead. Lagged input from an area that was not recorded, or "
         "amplifiers with unequal delays, make a lead where there is no influence.",
