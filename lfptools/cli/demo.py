@@ -12,6 +12,7 @@ from rich.table import Table
 from lfptools.analysis import Results
 from lfptools.cli.running import write_session
 from lfptools.io.opening import open_session
+from lfptools.plot.words import cell, probability, verdict_words
 from lfptools.report.leave import need_folder
 from lfptools.simulate import Scenario, simulate, write_demo
 
@@ -93,7 +94,7 @@ def latency_table(results: Results, truth: dict) -> Table:
             row["condition"],
             row["window"],
             str(row["n_trials"]),
-            interval(row["time_ms"], row["time_lo_ms"], row["time_hi_ms"]),
+            cell(row, "time_ms", "time_lo_ms", "time_hi_ms"),
             "-" if true["trough_ms"] is None else f"{true['trough_ms']:.1f}",
             f"{row['depth_um']:g}",
         )
@@ -114,8 +115,8 @@ def lag_table(results: Results, truth: dict) -> Table:
                 row["condition"],
                 row["window"],
                 str(row["n_trials"]),
-                interval(row["difference_ms"], row["lo_ms"], row["hi_ms"]),
-                f"{row['q']:.2g}",
+                cell(row, "difference_ms", "lo_ms", "hi_ms"),
+                probability(row["q"]),
                 ", ".join(order[row["window"], row["condition"]]),
             )
     return shown
@@ -156,18 +157,9 @@ def verdict_table(results: Results, truth: dict) -> Table:
             f"{row['area_a']}, {row['area_b']}",
             row["condition"],
             row["window"],
-            f"{row['leader']} leads" if row["verdict"] == "leads" else row["verdict"],
-            interval(row["net"], row["lo"], row["hi"], digits=3),
-            f"{row['q']:.2g}",
+            verdict_words(row),
+            cell(row, "net", "lo", "hi"),
+            probability(row["q"]),
             f"{true} leads" if true else "none",
         )
     return shown
-
-
-def interval(value: float, lo: float, hi: float, digits: int = 1) -> str:
-    """Return "value [lo, hi]", or a dash where there is none."""
-    if not np.isfinite(value):
-        return "-"
-    # Adding 0 after rounding turns -0.00 into 0.00.
-    at, low, high = (round(each, digits) + 0.0 for each in (value, lo, hi))
-    return f"{at:.{digits}f} [{low:.{digits}f}, {high:.{digits}f}]"
