@@ -48,6 +48,14 @@ def parser() -> argparse.ArgumentParser:
     run.add_argument("--force", action="store_true", help="write into a folder that is not empty")
     run.add_argument("--quiet", action="store_true", help="no progress bar")
 
+    bench = commands.add_parser(
+        "bench", help="scrub the windows of a session and watch the answers, in the browser"
+    )
+    bench.add_argument("session", type=Path, metavar="SESSION.toml")
+    bench.add_argument(
+        "--no-browser", action="store_true", help="print the address and open no browser"
+    )
+
     commands.add_parser("formats", help="list the recording formats: what each carries and needs")
     return top
 
@@ -97,6 +105,15 @@ def _run(asked: argparse.Namespace) -> int:
     return 0
 
 
+def _bench(asked: argparse.Namespace) -> int:
+    from lfptools.cli.bench import serve
+    from lfptools.io.opening import open_session
+
+    open_session(asked.session)  # refuses here, on the terminal, what the page would refuse
+    serve(asked.session, browser=not asked.no_browser)
+    return 0
+
+
 def _formats(asked: argparse.Namespace) -> int:
     from lfptools.cli.overview import show_formats
 
@@ -104,4 +121,4 @@ def _formats(asked: argparse.Namespace) -> int:
     return 0
 
 
-_COMMANDS = {"demo": _demo, "check": _check, "run": _run, "formats": _formats}
+_COMMANDS = {"demo": _demo, "check": _check, "run": _run, "bench": _bench, "formats": _formats}

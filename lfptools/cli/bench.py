@@ -1,0 +1,137 @@
+"""A session file in, the bench as a page of its own out, on this machine alone.
+
+The page is a one-cell notebook in a temporary folder, served through Voila by a Jupyter server
+bound to 127.0.0.1 and closed to everybody without its token.
+"""
+
+import json
+import os
+import secrets
+import signal
+import socket
+import subprocess
+import sys
+import time
+import urllib.error
+import urllib.request
+import webbrowser
+from contextlib import suppress
+from importlib.util import find_spec
+from pathlib import Path
+from tempfile import TemporaryDirectory
+
+from lfptools.errors import InputError, LfptoolsError
+
+_HOST = "127.0.0.1"
+_PAGE = "bench.ipynb"
+_START_S = 60.0
+#: Tells the bench that it stands on a page of its own and needs no picture for a saved notebook.
+PAGE_VARIABLE = "LFPTOOLS_BENCH_PAGE"
+
+
+def serve(session: Path, *, browser: bool) -> None:
+    """Serve the bench of a session until Ctrl-C.
+
+    Raises
+    ------
+    InputError
+        If Voila is not installed; the session itself is checked before (see `lfptools.cli`).
+    LfptoolsError
+        If the server does not come up.
+    """
+    for needed in ("voila", "jupyter_server"):
+        if find_spec(needed) is None:
+            raise InputError(f"the bench needs {needed}: pip install 'lfptools[app]'")
+    token, port = secrets.token_urlsafe(24), free_port()
+    with TemporaryDirectory(prefix="lfptools-bench-") as folder:
+        (Path(folder) / _PAGE).write_text(json.dumps(notebook(session.resolve())))
+        log = Path(folder) / "server.log"
+        with log.open("wb") as said:
+            server = subprocess.Popen(
+                command(port, Path(folder)),
+                env=os.environ | {PAGE_VARIABLE: "1", "JUPYTER_TOKEN": token},
+                stdout=said,
+                stderr=said,
+                start_new_session=True,
+            )
+        try:
+            _wait(server, port, token, log)
+            address = f"http://{_HOST}:{port}/voila/render/{_PAGE}?token={token}"
+            print(f"bench: {address}", flush=True)
+            print("Ctrl-C ends it", flush=True)
+            if browser:
+                webbrowser.open(address)
+            server.wait()
+        finally:
+            end(server)
+
+
+def command(port: int, folder: Path) -> list[str]:
+    """Return the command of the server; the token travels in the environment, not here."""
+    return [
+        sys.executable, "-m", "jupyter_server",
+        f"--ServerApp.ip={_HOST}",
+        f"--ServerApp.port={port}",
+        "--ServerApp.port_retries=0",
+        f"--ServerApp.root_dir={folder}",
+        "--ServerApp.open_browser=False",
+        "--ServerApp.jpserver_extensions={'voila.server_extension': True}",
+        "--ServerApp.allow_root=True",
+        "--VoilaConfiguration.show_tracebacks=True",
+    ]  # fmt: skip
+
+
+def notebook(session: Path) -> dict:
+    """Return the notebook of one cell that shows the bench of a session."""
+    return {
+        "cells": [
+            {
+                "cell_type": "code",
+                "execution_count": None,
+                "id": "bench",
+                "metadata": {},
+                "outputs": [],
+                "source": f"import lfpwidgets\nlfpwidgets.Bench({str(session)!r})",
+            }
+        ],
+        "metadata": {
+            "kernelspec": {"display_name": "Python 3", "language": "python", "name": "python3"}
+        },
+        "nbformat": 4,
+        "nbformat_minor": 5,
+    }
+
+
+def free_port() -> int:
+    """Return a port of this machine that nobody listens on."""
+    with socket.socket() as probe:
+        probe.bind((_HOST, 0))
+        return probe.getsockname()[1]
+
+
+def _wait(server: subprocess.Popen, port: int, token: str, log: Path) -> None:
+    """Return once the server answers to the token."""
+    ends = time.monotonic() + _START_S
+    request = urllib.request.Request(
+        f"http://{_HOST}:{port}/api/status", headers={"Authorization": f"token {token}"}
+    )
+    while time.monotonic() < ends:
+        if server.poll() is not None:
+            said = log.read_text(errors="replace").strip()
+            raise LfptoolsError(f"the server of the bench ended: {said[-800:]}")
+        try:
+            with urllib.request.urlopen(request, timeout=2):
+                return
+        except (urllib.error.URLError, OSError):
+            time.sleep(0.1)
+    raise LfptoolsError(f"the server of the bench did not answer within {_START_S:.0f} s")
+
+
+def end(server: subprocess.Popen) -> None:
+    """End the server and what it started: asked first, then its own process group killed."""
+    if server.poll() is None:
+        server.terminate()
+        with suppress(subprocess.TimeoutExpired):
+            server.wait(timeout=5)
+    with suppress(ProcessLookupError, PermissionError):
+        os.killpg(server.pid, signal.SIGKILL)
