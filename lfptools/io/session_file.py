@@ -62,7 +62,25 @@ def read_session_file(path: str | Path) -> SessionFile:
         contradicts another, or a path leads outside the root or to nothing.
     """
     path = Path(path)
-    choices = decode(_read_toml(path), str(path))
+    return parse_session_file(session_bytes(path), path)
+
+
+def parse_session_file(content: bytes, path: Path) -> SessionFile:
+    """Check the content of a session file as `read_session_file` does, wherever it comes from.
+
+    Parameters
+    ----------
+    content : bytes
+        The TOML, UTF-8.
+    path : Path
+        Where it lies or will lie: its folder is where the root starts.
+
+    Raises
+    ------
+    SessionFileError
+        As `read_session_file`.
+    """
+    choices = decode(_toml(content, path), str(path))
     for complaint in complaints(choices):
         raise SessionFileError(f"{path}: {complaint}")
     root = (path.parent / choices.root).resolve()
@@ -75,13 +93,25 @@ def read_session_file(path: str | Path) -> SessionFile:
     return found
 
 
-def _read_toml(path: Path) -> dict:
+def session_bytes(path: Path) -> bytes:
+    """Return what stands in a session file, unread.
+
+    Raises
+    ------
+    SessionFileError
+        If it is missing or cannot be read.
+    """
     try:
-        return tomllib.loads(path.read_bytes().decode("utf-8"))
+        return path.read_bytes()
     except FileNotFoundError:
         raise SessionFileError(f"{path}: there is no such session file") from None
     except OSError as cause:
         raise SessionFileError(f"{path}: cannot be read ({cause})") from cause
+
+
+def _toml(content: bytes, path: Path) -> dict:
+    try:
+        return tomllib.loads(content.decode("utf-8"))
     except UnicodeDecodeError as cause:
         raise SessionFileError(f"{path}: is no text in UTF-8 ({cause})") from None
     except tomllib.TOMLDecodeError as cause:  # its text ends with line and column

@@ -22,7 +22,7 @@ WIDGETS = next(
 #: Left to right, never back. Names in one group may not import each other unless BETWEEN says so.
 ORDER = [
     {"errors"}, {"units"}, {"checks"}, {"choices"}, {"model"}, {"columns"}, {"forward"}, {"io"},
-    {"simulate"}, {"clean"}, {"trials"}, {"resample"},
+    {"simulate"}, {"clean"}, {"trials"}, {"cut_cache"}, {"resample"},
     {"evoked", "waves", "components", "csd", "layers", "spikes", "bands", "firing_latency",
      "rates", "spike_field", "coupling", "direction"},
     {"contrast", "information"}, {"analysis"}, {"evidence"}, {"sensitivity", "plan"}, {"plot"},
