@@ -3,7 +3,7 @@
 from dataclasses import dataclass, replace
 
 import numpy as np
-from scipy.ndimage import gaussian_filter1d
+from scipy.ndimage import correlate1d, gaussian_filter1d
 from scipy.special import stdtrit
 
 from lfptools.errors import InputError
@@ -75,7 +75,7 @@ def average(signals: Signals, condition: np.ndarray, name: str, *, level: float)
     )
 
 
-def smooth(signals: Signals, sd_s: float) -> Signals:
+def smooth(signals: Signals, sd_s: float, span_s: tuple[float, float] | None = None) -> Signals:
     """Smooth every trial (zero-phase) and thin out samples no longer needed.
 
     Smoothing is linear, so it is done once, before any resampling. At least 2 samples an SD
@@ -86,20 +86,40 @@ def smooth(signals: Signals, sd_s: float) -> Signals:
     the intervals, which rest on the smoothed average, hold the unsmoothed landmark. (The
     kernel is the Gaussian of fourth order, phi(u) (3 - u^2) / 2; on the simulated sessions
     coverage of troughs and onsets rises from .92 and .84 to .94 and .94.)
+
+    Parameters
+    ----------
+    signals : Signals
+        data of shape (n_trials, n_signals, n_times).
+    sd_s : float
+        SD of the Gaussian in s; 0 leaves the samples as they are.
+    span_s : (float, float), optional
+        Keep only samples that lie in this span: the same samples with the same values, at
+        less cost. By default all.
     """
     sd_samples = sd_s * signals.rate_hz
-    data = signals.data
-    if sd_samples > 0:
-        curved = gaussian_filter1d(data, sd_samples, axis=-1, mode="nearest", order=2)
-        data = gaussian_filter1d(data, sd_samples, axis=-1, mode="nearest")
-        data = data - 0.5 * sd_samples**2 * curved
     step = max(1, int(min(signals.rate_hz // 1000, sd_samples // 2)))
-    return replace(
-        signals,
-        data=data[..., ::step],
-        time_s=signals.time_s[::step],
-        rate_hz=signals.rate_hz / step,
+    kept = np.arange(0, len(signals.time_s), step)
+    if span_s is not None:
+        kept = kept[window_mask(signals.time_s[kept], span_s)]
+    data = signals.data[..., kept]
+    if sd_samples > 0 and kept.size:
+        kernel = _kernel(sd_samples)
+        reach = len(kernel) // 2
+        first = max(0, kept[0] - reach)
+        part = signals.data[..., first : kept[-1] + reach + 1]
+        data = correlate1d(part, kernel, axis=-1, mode="nearest")[..., kept - first]
+    return replace(signals, data=data, time_s=signals.time_s[kept], rate_hz=signals.rate_hz / step)
+
+
+def _kernel(sd_samples: float) -> np.ndarray:
+    """Return the Gaussian less sd^2 / 2 times its second derivative, cut at 4 SD."""
+    pulse = np.zeros(2 * int(4 * sd_samples + 0.5) + 1)
+    pulse[len(pulse) // 2] = 1.0
+    plain, curved = (
+        gaussian_filter1d(pulse, sd_samples, order=order, mode="constant") for order in (0, 2)
     )
+    return plain - 0.5 * sd_samples**2 * curved
 
 
 def least_risk_smoothing(
@@ -124,31 +144,60 @@ def least_risk_smoothing(
     span_s : (float, float)
         Where the waves are looked for.
     """
-    risk = np.zeros(len(SMOOTHING_GRID_MS))
-    for each in signals:
-        for name in names:
-            risk += _relative_risk(each, condition == name, span_s)
-    best = int(np.argmin(risk))
+    return least_risk(
+        [smoothing_risk(each, condition == name) for each in signals for name in names], span_s
+    )
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class SmoothingRisk:
+    """What smoothing one average with each SD of the grid costs and what noise it leaves."""
+
+    time_s: np.ndarray  # (n_times,)
+    misfit: np.ndarray  # (n_sd, n_times) square of what the Gaussian takes off the average
+    noise: np.ndarray  # (n_sd,) 2 tr(S Sigma) / N
+    scale: float  # noise power of the average, unsmoothed
+
+
+def least_risk(risks: list[SmoothingRisk], span_s: tuple[float, float]) -> float:
+    """Return the SD (s) of least summed risk over a span, one step further on the grid."""
+    total = np.zeros(len(SMOOTHING_GRID_MS))
+    for each in risks:
+        misfit = each.misfit[:, window_mask(each.time_s, span_s)].mean(axis=1)
+        total += (misfit + each.noise) / each.scale
+    best = int(np.argmin(total))
     return SMOOTHING_GRID_MS[min(best + 1, len(SMOOTHING_GRID_MS) - 1)] / 1000
 
 
-def _relative_risk(signals: Signals, rows: np.ndarray, span_s: tuple[float, float]) -> np.ndarray:
+def smoothing_risk(signals: Signals, rows: np.ndarray) -> SmoothingRisk:
+    """Return the parts of the risk that no window changes.
+
+    Parameters
+    ----------
+    signals : Signals
+        One signal.
+    rows : ndarray of bool, shape (n_trials,)
+        Trials of one condition.
+    """
     trials = signals.data[rows, 0].astype(float)
     n_trials = len(trials)
     mean = trials.mean(axis=0)
-    inside = window_mask(signals.time_s, span_s)
     covariance = _autocovariance(trials - mean) * n_trials / (n_trials - 1)
     lags = np.arange(len(covariance))
-    risk = []
+    misfit, noise = [], []
     for sd_ms in SMOOTHING_GRID_MS:
         sd = sd_ms / 1000 * signals.rate_hz
         smoothed = gaussian_filter1d(mean, sd, mode="nearest") if sd > 0 else mean
         kernel = np.exp(-0.5 * (lags / sd) ** 2) if sd > 0 else (lags == 0).astype(float)
         kernel = kernel / (2 * kernel.sum() - kernel[0])
-        noise = 2 * kernel @ covariance - kernel[0] * covariance[0]
-        misfit = ((mean - smoothed)[inside] ** 2).mean()
-        risk.append(misfit + 2 * noise / n_trials)
-    return np.array(risk) / (covariance[0] / n_trials)
+        misfit.append((mean - smoothed) ** 2)
+        noise.append(2 * (2 * kernel @ covariance - kernel[0] * covariance[0]) / n_trials)
+    return SmoothingRisk(
+        time_s=signals.time_s,
+        misfit=np.array(misfit),
+        noise=np.array(noise),
+        scale=covariance[0] / n_trials,
+    )
 
 
 def _autocovariance(residuals: np.ndarray) -> np.ndarray:

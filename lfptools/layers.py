@@ -34,42 +34,27 @@ class SinkEstimate:
 
 def lfp_signals(trials: Trials) -> Signals:
     """Return the LFP of the good contacts, (n_trials, n_good, n_times)."""
-    good = ~trials.contacts.bad
-    data = trials.data_uv if good.all() else trials.data_uv[:, good]
-    return Signals(
-        area=trials.area,
-        kind="lfp",
-        channel=trials.contacts.channel[good],
-        depth_um=trials.contacts.depth_um[good],
-        data=data,
-        time_s=trials.time_s,
-        rate_hz=trials.rate_hz,
+    every, good = _all_contacts(trials), ~trials.contacts.bad
+    if good.all():
+        return every
+    return replace(
+        every,
+        channel=every.channel[good],
+        depth_um=every.depth_um[good],
+        data=every.data[:, good],
     )
 
 
-def strongest_sink(
-    csd: Signals, usable: np.ndarray, conditions: list[np.ndarray], spans_s: list
-) -> int:
-    """Return the index of the contact with the most negative average current.
-
-    Taken once per area from the average over all conditions and windows, never per window or
-    resample, among the contacts that are `usable` (good, and not the outermost ones).
-
-    Parameters
-    ----------
-    csd : Signals
-        All depths of one area.
-    usable : ndarray of bool, shape (n_contacts,)
-        Contacts that may stand for the area.
-    conditions : list of ndarray of bool
-        Trials of each condition that is estimated; each condition weighs the same.
-    spans_s : list of (float, float)
-        Windows of the area.
-    """
-    inside = np.any([window_mask(csd.time_s, span) for span in spans_s], axis=0)
-    mean = np.mean([csd.data[rows].mean(axis=0, dtype=float) for rows in conditions], axis=0)
-    strength = np.where(usable, mean[:, inside].min(axis=1), np.inf)
-    return int(np.argmin(strength))
+def _all_contacts(trials: Trials) -> Signals:
+    return Signals(
+        area=trials.area,
+        kind="lfp",
+        channel=trials.contacts.channel,
+        depth_um=trials.contacts.depth_um,
+        data=trials.data_uv,
+        time_s=trials.time_s,
+        rate_hz=trials.rate_hz,
+    )
 
 
 def usable_contacts(trials: Trials) -> np.ndarray:
@@ -82,6 +67,67 @@ def usable_contacts(trials: Trials) -> np.ndarray:
     return usable
 
 
+@dataclass(frozen=True, slots=True, eq=False)
+class Candidates:
+    """The signals of which one will stand for an area."""
+
+    signals: Signals
+    usable: np.ndarray  # (n_signals,) bool
+    note: str = ""
+
+
+def candidates(trials: Trials, csd: Signals | None, kind: str) -> Candidates:
+    """Return the signals of which one will stand for the area.
+
+    By default the current source density at the contacts that may carry a sink, which keeps
+    volume conduction and the common reference out. With too few contacts, or on request, the
+    LFP of the good contacts, marked "volume conduction not excluded".
+    """
+    usable = usable_contacts(trials)
+    if kind == "csd" and csd is not None and usable.any():
+        return Candidates(csd, usable)
+    few = f"fewer than {MIN_CONTACTS} good contacts; " if kind == "csd" else ""
+    return Candidates(_all_contacts(trials), ~trials.contacts.bad, few + ONE_CONTACT)
+
+
+def grand_mean(signals: Signals, conditions: list[np.ndarray]) -> np.ndarray:
+    """Return the average over trials in which each condition weighs the same.
+
+    Parameters
+    ----------
+    signals : Signals
+        data of shape (n_trials, n_signals, n_times).
+    conditions : list of ndarray of bool, shape (n_trials,)
+        Trials of each condition that is estimated.
+
+    Returns
+    -------
+    ndarray, shape (n_signals, n_times)
+    """
+    return np.mean([signals.data[rows].mean(axis=0, dtype=float) for rows in conditions], axis=0)
+
+
+def strongest(found: Candidates, mean: np.ndarray, spans_s: list[tuple[float, float]]) -> int:
+    """Return the index of the signal that stands for the area.
+
+    The most negative average current, or the largest average deflection of the LFP, over all
+    windows together: taken once per area, never per window or resample.
+
+    Parameters
+    ----------
+    found : Candidates
+        What may stand for the area.
+    mean : ndarray, shape (n_signals, n_times)
+        Their `grand_mean`.
+    spans_s : list of (float, float)
+        Windows of the area.
+    """
+    inside = np.any([window_mask(found.signals.time_s, span) for span in spans_s], axis=0)
+    part = mean[:, inside]
+    strength = -part.min(axis=1) if found.signals.kind == "csd" else np.ptp(part, axis=1)
+    return int(np.argmax(np.where(found.usable, strength, -np.inf)))
+
+
 def area_signal(
     trials: Trials,
     csd: Signals | None,
@@ -90,29 +136,20 @@ def area_signal(
     conditions: list[np.ndarray],
     spans_s: list[tuple[float, float]],
 ) -> Signals:
-    """Return the one signal that stands for an area in lags and direction.
-
-    By default the current source density at the strongest sink, which keeps volume conduction
-    and the common reference out. With too few contacts, or on request, the LFP of the contact
-    with the largest average deflection, marked "volume conduction not excluded".
-    """
-    if kind == "csd" and csd is not None and usable_contacts(trials).any():
-        index = strongest_sink(csd, usable_contacts(trials), conditions, spans_s)
-        return _only(csd, index)
-    lfp = lfp_signals(trials)
-    inside = np.any([window_mask(lfp.time_s, span) for span in spans_s], axis=0)
-    mean = np.mean([lfp.data[rows].mean(axis=0, dtype=float) for rows in conditions], axis=0)
-    index = int(np.argmax(np.ptp(mean[:, inside], axis=1)))
-    few = f"fewer than {MIN_CONTACTS} good contacts; " if kind == "csd" else ""
-    return replace(_only(lfp, index), note=few + ONE_CONTACT)
+    """Return the one signal that stands for an area in lags and direction."""
+    found = candidates(trials, csd, kind)
+    return chosen(found, strongest(found, grand_mean(found.signals, conditions), spans_s))
 
 
-def _only(signals: Signals, index: int) -> Signals:
+def chosen(found: Candidates, index: int) -> Signals:
+    """Return one of the candidates, in a block of memory of its own."""
+    signals, place = found.signals, slice(index, index + 1)
     return replace(
         signals,
-        channel=signals.channel[index : index + 1],
-        depth_um=signals.depth_um[index : index + 1],
-        data=np.ascontiguousarray(signals.data[:, index : index + 1]),
+        channel=signals.channel[place],
+        depth_um=signals.depth_um[place],
+        data=np.ascontiguousarray(signals.data[:, place]),
+        note=found.note,
     )
 
 
@@ -121,21 +158,21 @@ def layer_at(depth_um: float, layers: dict[str, tuple[float, float]]) -> str:
     return next((name for name, (top, end) in layers.items() if top <= depth_um < end), "")
 
 
-def measure_sink(
+def measure_sinks(
     csd: Signals,
     usable: np.ndarray,
     rows: np.ndarray,
-    search: Search,
+    searches: tuple[Search, ...],
     *,
     weights: np.ndarray,
     signs: np.ndarray,
     level: float,
-) -> SinkEstimate:
+) -> tuple[SinkEstimate, ...]:
     """Measure the strongest sink (search "trough") or source ("peak") of one window.
 
     p says only that there is one: the largest average current over depth and time, each depth
     over its SD, against random signs of the trials. Depth, times and their intervals come from
-    the resampled maps.
+    the resampled maps, which all searches share.
 
     Parameters
     ----------
@@ -145,71 +182,112 @@ def measure_sink(
         Contacts that may carry the sink.
     rows : ndarray of bool
         Trials of the condition.
-    search : Search
-        Window, sign and kind of onset.
+    searches : tuple of Search
+        One window, each with the sign of what is looked for; one estimate comes out for each.
     weights, signs : ndarray, shape (n_draws, n_trials), (n_flips + 1, n_trials)
         Shared by all areas.
     level : float
         Coverage of the intervals.
     """
-    flank = window_mask(csd.time_s, search.flank_span_s)
-    data = csd.data[rows][:, :, flank].astype(float)
+    flank = window_mask(csd.time_s, searches[0].flank_span_s)
     time_s = csd.time_s[flank]
-    n_trials = len(data)
-    mean = _sink_of(data.mean(axis=0)[None], csd.depth_um, usable, time_s, search)
-    draws = _resampled_sinks(data, csd.depth_um, usable, time_s, search, weights)
-    intervals = [percentile_interval(each, level=level, n_trials=n_trials) for each in draws[:4]]
-    inside = window_mask(time_s, search.span_s)
+    inside = window_mask(time_s, searches[0].span_s)
+    data = csd.data[rows][:, :, flank].astype(float)
+    places = [_Place(csd.depth_um, usable, time_s, inside, search) for search in searches]
+    draws = _resampled_sinks(data, places, weights)
+    p = _sink_p(data[:, usable][..., inside], searches, signs)
+    mean = data.mean(axis=0)[None]
+    return tuple(
+        _estimate(_sink_of(mean, place), drawn, place, each_p, len(data), level)
+        for place, drawn, each_p in zip(places, draws, p, strict=True)
+    )
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class _Place:
+    """Where one sink is looked for."""
+
+    depth_um: np.ndarray  # (n_contacts,)
+    usable: np.ndarray  # (n_contacts,) bool
+    time_s: np.ndarray  # (n_times,)
+    inside: np.ndarray  # (n_times,) bool, in the window
+    search: Search
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class _Sinks:
+    """The sink of each map of a stack."""
+
+    depth_um: np.ndarray
+    onset_s: np.ndarray
+    peak_s: np.ndarray
+    density: np.ndarray
+    profile: np.ndarray  # (n_maps, n_contacts) at the peak, the wave turned upwards
+    contact: np.ndarray
+
+
+def _estimate(
+    mean: _Sinks, draws: list[np.ndarray], place: _Place, p: float, n_trials: int, level: float
+) -> SinkEstimate:
+    depth, onset, peak = (
+        percentile_interval(each, level=level, n_trials=n_trials) for each in draws
+    )
     return SinkEstimate(
-        kind="sink" if search.extremum == "trough" else "source",
-        depth_um=float(mean[0][0]),
-        depth=intervals[0],
-        extent_um=_half_extent(mean[4][0], int(mean[5][0]), csd.depth_um),
-        onset_s=float(mean[1][0]),
-        onset=intervals[1],
-        peak_s=float(mean[2][0]),
-        peak=intervals[2],
-        density_ua_mm3=float(mean[3][0]),
-        p=_sink_p(search.sign * data[:, usable][..., inside], signs),
+        kind="sink" if place.search.extremum == "trough" else "source",
+        depth_um=float(mean.depth_um[0]),
+        depth=depth,
+        extent_um=_half_extent(mean.profile[0], int(mean.contact[0]), place.depth_um),
+        onset_s=float(mean.onset_s[0]),
+        onset=onset,
+        peak_s=float(mean.peak_s[0]),
+        peak=peak,
+        density_ua_mm3=float(mean.density[0]),
+        p=p,
         n_trials=n_trials,
     )
 
 
 def _resampled_sinks(
-    data: np.ndarray,
-    depth_um: np.ndarray,
-    usable: np.ndarray,
-    time_s: np.ndarray,
-    search: Search,
-    weights: np.ndarray,
-) -> list[np.ndarray]:
+    data: np.ndarray, places: list[_Place], weights: np.ndarray
+) -> list[list[np.ndarray]]:
+    """Return depth, onset and peak time of each resample, by place."""
     shape = data.shape[1:]
     flat = data.reshape(len(data), -1)
     block = max(1, _BLOCK_VALUES // flat.shape[1])
-    parts = [
-        _sink_of((weights[i : i + block] @ flat).reshape(-1, *shape), depth_um, usable, time_s,
-                 search)
-        for i in range(0, len(weights), block)
+    parts: list[list[_Sinks]] = [[] for _ in places]
+    for i in range(0, len(weights), block):
+        maps = (weights[i : i + block] @ flat).reshape(-1, *shape)
+        for place, part in zip(places, parts, strict=True):
+            part.append(_sink_of(maps, place))
+    return [
+        [np.concatenate([getattr(each, name) for each in part])
+         for name in ("depth_um", "onset_s", "peak_s")]
+        for part in parts
     ]  # fmt: skip
-    return [np.concatenate(each) for each in zip(*parts, strict=True)]
 
 
-def _sink_of(
-    maps: np.ndarray, depth_um: np.ndarray, usable: np.ndarray, time_s: np.ndarray, search: Search
-) -> tuple[np.ndarray, ...]:
-    """Return depth, onset, peak time, density, depth profile and contact of each map's sink."""
-    inside = window_mask(time_s, search.span_s)
-    up = search.sign * maps
-    strength = np.where(usable[:, None] & inside, up, -np.inf).max(axis=-1)
-    contact = np.argmax(strength, axis=1)
+def _sink_of(maps: np.ndarray, place: _Place) -> _Sinks:
+    sign, time_s, inside = place.search.sign, place.time_s, place.inside
+    first, last = np.flatnonzero(inside)[[0, -1]]
+    part = maps[..., first : last + 1]
+    strength = part.max(axis=-1) if sign > 0 else -part.min(axis=-1)
+    contact = np.argmax(np.where(place.usable, strength, -np.inf), axis=1)
     courses = np.take_along_axis(maps, contact[:, None, None], axis=1)[:, 0]
-    found = landmarks(courses, time_s, search)
-    times = np.where(np.isfinite(found.time_s), found.time_s, time_s[inside][0])
+    found = landmarks(courses, time_s, place.search)
+    times = np.where(np.isfinite(found.time_s), found.time_s, time_s[first])
     sample = np.clip(np.rint((times - time_s[0]) / (time_s[1] - time_s[0])), 0, len(time_s) - 1)
-    profile = np.take_along_axis(up, sample.astype(int)[:, None, None], axis=2)[..., 0]
-    depth = _refined_depth(profile, contact, depth_um)
+    at = sample.astype(int)[:, None, None]
+    profile = sign * np.take_along_axis(maps, at, axis=2)[..., 0]
+    depth = _refined_depth(profile, contact, place.depth_um)
     nan = np.where(np.isfinite(found.time_s), 0.0, np.nan)
-    return depth + nan, found.onset_s, found.time_s, found.amplitude, profile, contact
+    return _Sinks(
+        depth_um=depth + nan,
+        onset_s=found.onset_s,
+        peak_s=found.time_s,
+        density=found.amplitude,
+        profile=profile,
+        contact=contact,
+    )
 
 
 def _refined_depth(profile: np.ndarray, at: np.ndarray, depth_um: np.ndarray) -> np.ndarray:
@@ -237,12 +315,15 @@ def _half_extent(profile: np.ndarray, at: int, depth_um: np.ndarray) -> float:
     return float(last - first)
 
 
-def _sink_p(up: np.ndarray, signs: np.ndarray) -> float:
-    n_trials = len(up)
-    scale = np.sqrt((up**2).mean(axis=(0, 2), keepdims=True)) + np.finfo(float).tiny
-    flat = (up / scale).reshape(n_trials, -1)
+def _sink_p(data: np.ndarray, searches: tuple[Search, ...], signs: np.ndarray) -> list[float]:
+    n_trials = len(data)
+    scale = np.sqrt((data**2).mean(axis=(0, 2), keepdims=True)) + np.finfo(float).tiny
+    flat = (data / scale).reshape(n_trials, -1)
     block = max(1, _BLOCK_VALUES // flat.shape[1])
-    largest = np.concatenate(
-        [(signs[i : i + block] @ flat).max(axis=1) for i in range(0, len(signs), block)]
-    )
-    return float(exceedance_p(largest[0], largest[1:]))
+    largest = np.empty((len(searches), len(signs)))
+    for i in range(0, len(signs), block):
+        sums = signs[i : i + block] @ flat
+        for each, search in zip(largest, searches, strict=True):
+            up = sums.max(axis=1) if search.sign > 0 else -sums.min(axis=1)
+            each[i : i + block] = up
+    return [float(exceedance_p(each[0], each[1:])) for each in largest]

@@ -16,11 +16,10 @@ from lfptools.choices import Span, WindowChoice
 from lfptools.errors import InputError
 from lfptools.firing_latency import poisson_latency, why_no_latency
 from lfptools.model import CutSession
+from lfptools.rate_change import MIN_SPIKES, Counts, count_spikes, stimuli_of, tested_changes
 from lfptools.spikes import bin_edges, binned_counts, spikes_around
 from lfptools.trials import FEW_TRIALS, MIN_TRIALS, window_mask
 
-#: A unit with fewer spikes in baseline and window together is not estimated.
-MIN_SPIKES = 5
 #: A change is called where its q is at most this.
 MAX_Q = 0.05
 #: Resamples without a latency are named in the note above this share.
@@ -29,36 +28,21 @@ ENOUGH_DEFINED = 0.95
 CURVE_BIN_MS = 5.0
 
 
-@dataclass(frozen=True, slots=True, eq=False)
-class _Cell:
-    """One unit in one window and condition: what was counted in each trial."""
-
-    unit: int
-    window: int
-    span_s: Span
-    in_baseline: np.ndarray  # (n_trials,)
-    in_window: np.ndarray  # (n_trials,)
-    change_hz: np.ndarray  # (n_trials,) rate in the window minus rate in the baseline
-
-
 def firing_rows(
-    cut: CutSession, *, weights: Mapping[str, np.ndarray], rng: np.random.Generator
+    cut: CutSession, *, weights: Mapping[str, np.ndarray], signs: Mapping[str, np.ndarray]
 ) -> list[dict]:
     """Return one row a unit, condition and window, with the columns of firing.csv.
 
     `session` and `q` are the caller's; `call` stays empty until `finish_calls`, which also
-    folds `latency_note` into `note`. The sign flip supposes that, without a response, the
-    difference of the rates of a trial is as likely to be positive as negative; with many
-    trials the mean may take its place.
+    folds `latency_note` into `note`.
 
     Parameters
     ----------
     cut : CutSession
         The session, cut into trials. Its depths are in um, its spike times in s.
-    weights : mapping of str to ndarray, shape (n_draws, n_trials of the condition)
-        Bootstrap weights of each condition; each row sums to 1.
-    rng : Generator
-        Draws the sign flips.
+    weights, signs : mapping of str to ndarray
+        Bootstrap weights (n_draws, n_trials of the condition), each row sums to 1, and random
+        signs (n_flips + 1, n_trials), the first row all +1, of each condition.
 
     Raises
     ------
@@ -66,21 +50,46 @@ def firing_rows(
         If the weights of a condition are missing or do not fit its trials, or spike times do
         not rise.
     """
-    rows: dict[tuple[int, int, int], dict] = {}
-    for number, condition in enumerate(cut.table.conditions):
-        stimulus_s = cut.table.accepted_time_s()[cut.condition == condition]
-        cells = _count(cut, stimulus_s)
-        made = [_empty_row(cut, cell, condition) for cell in cells]
-        if len(stimulus_s) < MIN_TRIALS:
-            for row in made:
-                row["note"] = FEW_TRIALS
-        elif cells:
-            _estimate(
-                cut, cells, made, stimulus_s, _weights_of(weights, condition, stimulus_s), rng
-            )
-        for cell, row in zip(cells, made, strict=True):
-            rows[cell.unit, number, cell.window] = row
-    return [rows[place] for place in sorted(rows)]
+    parts = [
+        (number, place, window_rows(cut, condition, window, weights=weights, signs=signs))
+        for number, condition in enumerate(cut.table.conditions)
+        for place, window in enumerate(cut.choices.window)
+    ]
+    return in_order(parts)
+
+
+def in_order(parts: list[tuple[int, int, dict[int, dict]]]) -> list[dict]:
+    """Return rows by unit, condition and window.
+
+    Parameters
+    ----------
+    parts : list of (condition, window, rows)
+        Places of condition and window in their order, and what `window_rows` gave.
+    """
+    placed = {
+        (unit, condition, window): row
+        for condition, window, rows in parts
+        for unit, row in rows.items()
+    }
+    return [placed[place] for place in sorted(placed)]
+
+
+def window_rows(
+    cut: CutSession,
+    condition: str,
+    window: WindowChoice,
+    *,
+    weights: Mapping[str, np.ndarray],
+    signs: Mapping[str, np.ndarray],
+) -> dict[int, dict]:
+    """Return the rows of one window and condition, by number of the unit."""
+    counts = count_spikes(cut, condition, window)
+    rows = [_empty_row(cut, counts, place, condition, window) for place in range(len(counts.unit))]
+    if len(counts.in_window) < MIN_TRIALS:
+        rows = [row | {"note": FEW_TRIALS} for row in rows]
+    elif rows:
+        _estimate(cut, counts, rows, condition, weights, signs)
+    return dict(zip(counts.unit.tolist(), rows, strict=True))
 
 
 def call(change_hz: float, q: float) -> str:
@@ -116,58 +125,36 @@ def _finished(row: dict) -> dict:
     return row
 
 
-def _count(cut: CutSession, stimulus_s: np.ndarray) -> list[_Cell]:
-    """Count each unit in its baseline and windows, unit by unit."""
-    baseline_s = _baseline_s(cut)
-    cells = []
-    for unit, (time_s, area) in enumerate(_units(cut)):
-        before = _count_in(time_s, stimulus_s, baseline_s)
-        for number, window in enumerate(cut.choices.window):
-            if window.holds(area):
-                span_s = window.span_s(area)
-                after = _count_in(time_s, stimulus_s, span_s)
-                change = after / np.ptp(span_s) - before / np.ptp(baseline_s)
-                cells.append(_Cell(unit, number, span_s, before, after, change))
-    return cells
-
-
-def _count_in(time_s: np.ndarray, stimulus_s: np.ndarray, span_s: Span) -> np.ndarray:
-    return binned_counts(time_s, stimulus_s, edges_s=np.array(span_s))[:, 0]
-
-
 def _units(cut: CutSession) -> list[tuple[np.ndarray, str]]:
     if cut.spikes is None:
         return []
     return list(zip(cut.spikes.time_s, cut.spikes.area, strict=True))
 
 
-def _baseline_s(cut: CutSession) -> Span:
-    first, last = cut.choices.trials.baseline_ms
-    return first / 1000, last / 1000
-
-
-def _weights_of(
-    weights: Mapping[str, np.ndarray], condition: str, stimulus_s: np.ndarray
+def _fitting(
+    given: Mapping[str, np.ndarray], what: str, condition: str, n_trials: int
 ) -> np.ndarray:
-    if condition not in weights:
-        raise InputError(f"no bootstrap weights for condition {condition!r}; each needs its own")
-    return array(f"weights of {condition!r}", weights[condition], (None, len(stimulus_s)))
+    if condition not in given:
+        raise InputError(f"no {what} for condition {condition!r}; each needs its own")
+    return array(f"{what} of {condition!r}", given[condition], (None, n_trials))
 
 
-def _empty_row(cut: CutSession, cell: _Cell, condition: str) -> dict:
+def _empty_row(
+    cut: CutSession, counts: Counts, place: int, condition: str, window: WindowChoice
+) -> dict:
     assert cut.spikes is not None
-    window: WindowChoice = cut.choices.window[cell.window]
+    unit = int(counts.unit[place])
     missing = dict.fromkeys(
         ("baseline_hz", "window_hz", "change_hz", "lo_hz", "hi_hz", "p"), np.nan
     )
     return {
-        "area": cut.spikes.area[cell.unit],
-        "unit": cut.spikes.unit[cell.unit],
-        "depth_um": float(cut.spikes.depth_um[cell.unit]),
+        "area": cut.spikes.area[unit],
+        "unit": cut.spikes.unit[unit],
+        "depth_um": float(cut.spikes.depth_um[unit]),
         "condition": condition,
         "window": window.name,
-        "n_trials": len(cell.change_hz),
-        "n_spikes": int(cell.in_window.sum()),
+        "n_trials": len(counts.in_window),
+        "n_spikes": int(counts.in_window[:, place].sum()),
         **missing,
         "call": "",
         "latency_ms": np.nan,
@@ -181,53 +168,61 @@ def _empty_row(cut: CutSession, cell: _Cell, condition: str) -> dict:
 
 def _estimate(
     cut: CutSession,
-    cells: list[_Cell],
+    counts: Counts,
     rows: list[dict],
-    stimulus_s: np.ndarray,
-    weights: np.ndarray,
-    rng: np.random.Generator,
+    condition: str,
+    weights: Mapping[str, np.ndarray],
+    signs: Mapping[str, np.ndarray],
 ) -> None:
-    """Fill the rows of one condition: all cells share one matrix product a scheme."""
-    settings = cut.choices.resample
-    change = np.stack([cell.change_hz for cell in cells], axis=1)
-    flipped = np.abs(resample.sign_flips(len(change), settings.n, rng) @ change)
-    p = resample.exceedance_p(flipped[0], flipped[1:])
-    interval = resample.percentile_interval(
-        weights @ change, level=settings.level, n_trials=len(change)
+    """Fill the rows of one window: all units share one matrix product a scheme."""
+    drawn = _fitting(weights, "bootstrap weights", condition, len(counts.in_window))
+    tested = tested_changes(
+        counts.change_hz,
+        weights=drawn,
+        signs=_fitting(signs, "random signs", condition, len(drawn[0])),
+        level=cut.choices.resample.level,
     )
-    for number, (cell, row) in enumerate(zip(cells, rows, strict=True)):
-        n_found = int(cell.in_baseline.sum() + cell.in_window.sum())
-        if n_found < MIN_SPIKES:
+    baseline_hz, window_hz = counts.baseline_hz, counts.window_hz
+    for place, row in enumerate(rows):
+        if not counts.enough[place]:
             row["note"] = (
-                f"{n_found} spikes in baseline and window; not estimated below {MIN_SPIKES}"
+                f"{counts.n_spikes[place]} spikes in baseline and window; "
+                f"not estimated below {MIN_SPIKES}"
             )
             continue
-        row["baseline_hz"] = float(cell.in_baseline.mean() / np.ptp(_baseline_s(cut)))
-        row["window_hz"] = float(cell.in_window.mean() / np.ptp(cell.span_s))
+        row["baseline_hz"] = float(baseline_hz[place])
+        row["window_hz"] = float(window_hz[place])
         row["change_hz"] = row["window_hz"] - row["baseline_hz"]
-        row["lo_hz"] = float(interval.lo[number])
-        row["hi_hz"] = float(interval.hi[number])
-        row["p"] = float(p[number])
-        row |= _latency(cut, cell, stimulus_s, weights, rise=row["change_hz"] > 0)
+        row["lo_hz"] = float(tested.lo_hz[place])
+        row["hi_hz"] = float(tested.hi_hz[place])
+        row["p"] = float(tested.p[place])
+        row |= _latency(cut, counts, place, condition, drawn, rise=row["change_hz"] > 0)
 
 
 def _latency(
-    cut: CutSession, cell: _Cell, stimulus_s: np.ndarray, weights: np.ndarray, *, rise: bool
+    cut: CutSession,
+    counts: Counts,
+    place: int,
+    condition: str,
+    weights: np.ndarray,
+    *,
+    rise: bool,
 ) -> dict:
-    """Return the latency columns of one cell and what is to be said about them."""
+    """Return the latency columns of one unit and what is to be said about them."""
     assert cut.spikes is not None
-    bin_ms = cut.choices.rates.bin_ms
+    bin_ms, span_s = cut.choices.rates.bin_ms, counts.span_s[place]
     first_ms, last_ms = cut.choices.trials.baseline_ms
-    per_bin = cell.in_baseline * bin_ms / (last_ms - first_ms)
+    per_bin = counts.in_baseline[:, place] * bin_ms / (last_ms - first_ms)
     refused = why_no_latency(per_bin.sum(), bin_ms, rise=rise)
     if refused:
         return {"latency_note": refused}
-    edges_s = _bins_of(cut.choices.trials.window_ms, bin_ms, cell.span_s)
-    counts = binned_counts(cut.spikes.time_s[cell.unit], stimulus_s, edges_s=edges_s)
+    stimulus_s = stimuli_of(cut, condition)
+    edges_s = _bins_of(cut.choices.trials.window_ms, bin_ms, span_s)
+    binned = binned_counts(cut.spikes.time_s[counts.unit[place]], stimulus_s, edges_s=edges_s)
     n_trials = len(stimulus_s)
     scheme = np.vstack([np.ones(n_trials), n_trials * weights])  # the data's own row first
     latency_s = poisson_latency(
-        np.rint(scheme @ counts), scheme @ per_bin, edges_s[:-1], span_s=cell.span_s, rise=rise
+        np.rint(scheme @ binned), scheme @ per_bin, edges_s[:-1], span_s=span_s, rise=rise
     )
     if np.isnan(latency_s[0]):
         return {"latency_note": "latency not found by the Poisson criterion"}

@@ -10,7 +10,6 @@ from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
-from scipy.ndimage import minimum_filter1d
 
 from lfptools.checks import one_of
 from lfptools.errors import InputError
@@ -70,7 +69,7 @@ class Landmarks:
     onset_s: np.ndarray
 
 
-@dataclass(frozen=True, slots=True, eq=False)
+@dataclass(frozen=True, slots=True)
 class Search:
     """Where and how a wave is looked for.
 
@@ -104,6 +103,12 @@ class Search:
     def prominence_span_s(self) -> tuple[float, float]:
         """Span read for prominence: the window and a flank on either side."""
         return self.span_s[0] - self.reach_s, self.span_s[1] + self.reach_s
+
+    @property
+    def reading_span_s(self) -> tuple[float, float]:
+        """All that is read: both spans together."""
+        flank, wide = self.flank_span_s, self.prominence_span_s
+        return min(flank[0], wide[0]), max(flank[1], wide[1])
 
 
 def landmarks(curves: np.ndarray, time_s: np.ndarray, search: Search) -> Landmarks:
@@ -176,13 +181,33 @@ def prominence(curves: np.ndarray, time_s: np.ndarray, search: Search) -> np.nda
     """
     up = search.sign * curves
     reach = max(2, round(search.reach_s / (time_s[1] - time_s[0])))
-    size = reach + 1
-    left = minimum_filter1d(up, size, axis=-1, mode="nearest", origin=(size - 1) // 2)
-    right = minimum_filter1d(up, size, axis=-1, mode="nearest", origin=-(size // 2))
-    rise = up - np.maximum(left, right)
-    inside = window_mask(time_s, search.span_s)[1:-1]
-    is_peak = (up[..., 1:-1] >= up[..., :-2]) & (up[..., 1:-1] > up[..., 2:]) & inside
-    return np.where(is_peak, rise[..., 1:-1], 0.0).max(axis=-1)
+    inside = np.flatnonzero(window_mask(time_s, search.span_s)[1:-1]) + 1
+    if not inside.size:
+        return np.zeros(up.shape[:-1])
+    first, last = inside[0], inside[-1] + 1
+    middle = up[..., first:last]
+    rise = middle - _higher_floor(up, reach, first, last)
+    is_peak = (middle >= up[..., first - 1 : last - 1]) & (middle > up[..., first + 1 : last + 1])
+    return np.where(is_peak, rise, 0.0).max(axis=-1)
+
+
+def _higher_floor(up: np.ndarray, reach: int, first: int, last: int) -> np.ndarray:
+    """Return the higher of the two lowest values within `reach` of each sample in [first, last).
+
+    One lies to the left, one to the right. Minima over doubling lengths take a few passes,
+    where a moving minimum takes many; beyond the ends nothing is lower.
+    """
+    before, after = max(0, reach - first), max(0, last + reach - up.shape[-1])
+    edges = [(0, 0)] * (up.ndim - 1) + [(before, after)]
+    part = np.pad(up[..., max(0, first - reach) : last + reach], edges, constant_values=np.inf)
+    length = 1
+    while 2 * length <= reach + 1:
+        part = np.minimum(part[..., :-length], part[..., length:])
+        length *= 2
+    rest = reach + 1 - length
+    lowest = np.minimum(part[..., : part.shape[-1] - rest], part[..., rest:])
+    n = last - first
+    return np.maximum(lowest[..., :n], lowest[..., reach : reach + n])
 
 
 def measure(

@@ -5,6 +5,7 @@ from itertools import combinations
 
 import numpy as np
 
+from lfptools.analysis.basis import identity
 from lfptools.analysis.prepared import CHOSEN_HERE, Prepared
 from lfptools.analysis.results import Row, ms, note
 from lfptools.choices import WindowChoice
@@ -12,7 +13,7 @@ from lfptools.evoked import smooth
 from lfptools.layers import lfp_signals
 from lfptools.model import Signals
 from lfptools.resample import percentile_interval, zero_p
-from lfptools.trials import FEW_TRIALS
+from lfptools.trials import FEW_TRIALS, Progress, no_progress
 from lfptools.waves import WaveEstimate, measure
 
 Key = tuple[str, str, str]  # area, condition, window
@@ -23,25 +24,51 @@ def chosen_note(window: WindowChoice) -> str:
     return CHOSEN_HERE if window.chosen != "before" else ""
 
 
-def measure_areas(prepared: Prepared) -> dict[Key, WaveEstimate]:
+def measure_areas(prepared: Prepared, progress: Progress = no_progress) -> dict[Key, WaveEstimate]:
     """Measure each window's wave in the signal that stands for each area."""
-    found: dict[Key, WaveEstimate] = {}
-    for area, signal in prepared.signals.items():
-        for condition, window, estimate in _measured(prepared, signal):
-            found[area, condition, window.name] = estimate
+    jobs = [
+        (area, condition, window)
+        for area in prepared.signals
+        for window in prepared.windows_of(area)
+        for condition in prepared.estimated
+    ]
+    found = {}
+    for number, (area, condition, window) in enumerate(jobs):
+        progress("finding the waves", number / len(jobs))
+        found[area, condition, window.name] = measure_area(prepared, area, condition, window)
     return found
 
 
-def _measured(
-    prepared: Prepared, signals: Signals
+def measure_area(
+    prepared: Prepared, area: str, condition: str, window: WindowChoice
+) -> WaveEstimate:
+    """Measure one window's wave in the signal that stands for an area, or recall it."""
+    signal, search = prepared.signals[area], prepared.search(window, area)
+    sd_s = prepared.smooth_s[window.name]
+    return prepared.basis.estimates.get(
+        ("wave", *identity(signal), condition, search, sd_s),
+        lambda: measure(
+            prepared.basis.smoothed(signal, sd_s),
+            prepared.rows(condition),
+            search,
+            weights=prepared.weights[condition],
+            signs=prepared.signs[condition],
+            level=prepared.choices.resample.level,
+        ),
+    )
+
+
+def _measured_contacts(
+    prepared: Prepared, contacts: Signals
 ) -> Iterator[tuple[str, WindowChoice, WaveEstimate]]:
-    for window in prepared.windows_of(signals.area):
-        smoothed = smooth(signals, prepared.smooth_s[window.name])
+    for window in prepared.windows_of(contacts.area):
+        search = prepared.search(window, contacts.area)
+        smoothed = smooth(contacts, prepared.smooth_s[window.name], search.reading_span_s)
         for condition in prepared.estimated:
             estimate = measure(
                 smoothed,
                 prepared.rows(condition),
-                prepared.search(window, smoothed.area),
+                search,
                 weights=prepared.weights[condition],
                 signs=prepared.signs[condition],
                 level=prepared.choices.resample.level,
@@ -53,16 +80,26 @@ def latency_rows(prepared: Prepared, areas: dict[Key, WaveEstimate]) -> list[Row
     """Return latencies of each area's signal, then of every good contact."""
     rows: list[Row] = []
     for trials in prepared.cut.areas:
-        signal = prepared.signals[trials.area]
-        windows = {window.name: window for window in prepared.windows_of(trials.area)}
         for condition in prepared.conditions:
-            for name, window in windows.items():
-                estimate = areas.get((trials.area, condition, name))
-                rows += _rows(prepared, signal, "area", condition, window, estimate)
+            for window in prepared.windows_of(trials.area):
+                estimate = areas.get((trials.area, condition, window.name))
+                rows += area_rows(prepared, trials.area, condition, window, estimate)
         contacts = lfp_signals(trials)
-        for condition, window, estimate in _measured(prepared, contacts):
+        for condition, window, estimate in _measured_contacts(prepared, contacts):
             rows += _rows(prepared, contacts, "contact", condition, window, estimate)
     return rows
+
+
+def area_rows(
+    prepared: Prepared,
+    area: str,
+    condition: str,
+    window: WindowChoice,
+    estimate: WaveEstimate | None,
+) -> list[Row]:
+    """Return the row of the signal that stands for an area; None: too few trials."""
+    signal = prepared.signals[area]
+    return list(_rows(prepared, signal, "area", condition, window, estimate))
 
 
 def _rows(
@@ -146,7 +183,7 @@ def _lags(
             continue
         yield (
             row
-            | _difference(a, b, feature, prepared.choices.resample.level)
+            | difference(a, b, feature, prepared.choices.resample.level)
             | {
                 "note": note(
                     *_said(first, a),
@@ -158,19 +195,22 @@ def _lags(
         )
 
 
-def _difference(a: WaveEstimate, b: WaveEstimate, feature: str, level: float) -> Row:
-    """Return b minus a with its interval and p; empty where either was not found."""
+def difference(a: WaveEstimate, b: WaveEstimate, feature: str, level: float) -> Row:
+    """Return b minus a with its interval and p; empty where either was not found.
+
+    `feature` is "time" or "onset"; both estimates rest on the same resamples.
+    """
     at_a, at_b = getattr(a, f"{feature}_s")[0], getattr(b, f"{feature}_s")[0]
-    difference = float(at_b - at_a)
-    if not np.isfinite(difference):
+    lag_s = float(at_b - at_a)
+    if not np.isfinite(lag_s):
         return {}
     draws = getattr(b, f"{feature}_draws_s")[:, 0] - getattr(a, f"{feature}_draws_s")[:, 0]
     interval = percentile_interval(draws, level=level, n_trials=a.n_trials)
     return {
-        "difference_ms": ms(difference),
+        "difference_ms": ms(lag_s),
         "lo_ms": ms(interval.lo),
         "hi_ms": ms(interval.hi),
-        "p": zero_p(difference, draws),
+        "p": zero_p(lag_s, draws),
     }
 
 

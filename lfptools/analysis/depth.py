@@ -1,5 +1,7 @@
 """Prepared currents in, the rows of sinks.csv out."""
 
+from dataclasses import replace
+
 import numpy as np
 
 from lfptools.analysis.arrival import chosen_note
@@ -7,40 +9,62 @@ from lfptools.analysis.prepared import Prepared
 from lfptools.analysis.results import Row, ms, note
 from lfptools.choices import WindowChoice
 from lfptools.evoked import smooth
-from lfptools.layers import SinkEstimate, layer_at, measure_sink, usable_contacts
+from lfptools.layers import SinkEstimate, layer_at, measure_sinks, usable_contacts
 from lfptools.model import Trials
 from lfptools.trials import FEW_TRIALS
-from lfptools.waves import ALPHA
+from lfptools.waves import ALPHA, Search
 
 _EXTREMUM = {"sink": "trough", "source": "peak"}
 
 
 def sink_rows(prepared: Prepared) -> list[Row]:
     """Return the strongest sink and the strongest source of each area, window and condition."""
-    rows: list[Row] = []
-    for trials in prepared.cut.areas:
-        if trials.area not in prepared.csd:
-            continue
-        usable = usable_contacts(trials)
-        for window in prepared.windows_of(trials.area):
-            smoothed = smooth(prepared.csd[trials.area], prepared.smooth_s[window.name])
-            for condition in prepared.conditions:
-                for kind, extremum in _EXTREMUM.items():
-                    row = _base(prepared, trials, condition, window, kind)
-                    if condition not in prepared.estimated:
-                        rows.append(row | {"note": FEW_TRIALS})
-                        continue
-                    estimate = measure_sink(
-                        smoothed,
-                        usable,
-                        prepared.rows(condition),
-                        prepared.search(window, trials.area, extremum),
-                        weights=prepared.weights[condition],
-                        signs=prepared.signs[condition],
-                        level=prepared.choices.resample.level,
-                    )
-                    rows.append(row | _values(estimate, trials, window))
-    return rows
+    return [
+        row
+        for area in prepared.csd
+        for window in prepared.windows_of(area)
+        for condition in prepared.conditions
+        for row in window_sinks(prepared, area, condition, window)
+    ]
+
+
+def window_sinks(prepared: Prepared, area: str, condition: str, window: WindowChoice) -> list[Row]:
+    """Return the rows of one area, window and condition: its sink, then its source."""
+    trials = prepared.cut.trials_of(area)
+    assert trials is not None
+    rows = [_base(prepared, trials, condition, window, kind) for kind in _EXTREMUM]
+    if condition not in prepared.estimated:
+        return [row | {"note": FEW_TRIALS} for row in rows]
+    searches = tuple(prepared.search(window, area, each) for each in _EXTREMUM.values())
+    sd_s = prepared.smooth_s[window.name]
+    estimates = prepared.basis.estimates.get(
+        ("sinks", area, condition, searches, sd_s),
+        lambda: _measured(prepared, trials, condition, searches, sd_s),
+    )
+    return [
+        row | _values(estimate, trials, window)
+        for row, estimate in zip(rows, estimates, strict=True)
+    ]
+
+
+def _measured(
+    prepared: Prepared,
+    trials: Trials,
+    condition: str,
+    searches: tuple[Search, ...],
+    sd_s: float,
+) -> tuple[SinkEstimate, ...]:
+    csd, rows = prepared.csd[trials.area], prepared.rows(condition)
+    own = replace(csd, data=csd.data[rows])
+    return measure_sinks(
+        smooth(own, sd_s, searches[0].reading_span_s),
+        usable_contacts(trials),
+        np.ones(len(own.data), dtype=bool),
+        searches,
+        weights=prepared.weights[condition],
+        signs=prepared.signs[condition],
+        level=prepared.choices.resample.level,
+    )
 
 
 def _base(

@@ -5,6 +5,7 @@ from itertools import combinations
 import numpy as np
 
 from lfptools.analysis.arrival import chosen_note
+from lfptools.analysis.basis import identity
 from lfptools.analysis.prepared import Prepared
 from lfptools.analysis.results import Row, ms, note
 from lfptools.choices import WindowChoice
@@ -30,14 +31,25 @@ def estimate_pairs(
     found = []
     for number, (first, second, condition, window) in enumerate(jobs):
         progress("testing the direction", number / len(jobs))
-        rows = prepared.rows(condition)
-        # A condition with too few trials is withheld before its signs are looked at.
-        signs = prepared.signs.get(condition)
-        if signs is None:
-            signs = sign_flips(max(1, int(rows.sum())), 1, np.random.default_rng(0))
-        estimate = estimate_pair(
-            prepared.signals[first],
-            prepared.signals[second],
+        found.append((condition, window, _pair(prepared, first, second, condition, window)))
+    return found
+
+
+def _pair(
+    prepared: Prepared, first: str, second: str, condition: str, window: WindowChoice
+) -> PairEstimate:
+    """Estimate one pair, condition and window, or recall it."""
+    basis, a, b = prepared.basis, prepared.signals[first], prepared.signals[second]
+    rows = prepared.rows(condition)
+    # A condition with too few trials is withheld before its signs are looked at.
+    signs = prepared.signs.get(condition)
+    if signs is None:
+        signs = sign_flips(max(1, int(rows.sum())), 1, np.random.default_rng(0))
+    return basis.estimates.get(
+        ("pair", *identity(a), *identity(b), condition, window.direction_span_s),
+        lambda: estimate_pair(
+            a,
+            b,
             rows,
             prepared.cut.table.accepted_time_s(),
             window,
@@ -45,9 +57,9 @@ def estimate_pairs(
             signs=signs,
             level=prepared.choices.resample.level,
             caveats=_caveats(prepared, first, second),
-        )
-        found.append((condition, window, estimate))
-    return found
+            at_rate=basis.at_rate,
+        ),
+    )
 
 
 def _caveats(prepared: Prepared, first: str, second: str) -> tuple[str, ...]:

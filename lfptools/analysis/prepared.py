@@ -1,8 +1,7 @@
-"""A cut session in, what all analyses share out: signals, smoothing, conditions, resamples.
+"""A cut session and its windows in, what all analyses share out: signals and smoothing.
 
 One signal stands for each area, and one smoothing a window serves all areas and conditions,
-which are compared within it. Resamples and random signs are drawn once per condition and used
-by every analysis, so that differences between areas are paired on the same trials.
+which are compared within it.
 """
 
 from dataclasses import dataclass, replace
@@ -10,14 +9,12 @@ from dataclasses import dataclass, replace
 import msgspec
 import numpy as np
 
+from lfptools.analysis.basis import Basis, identity, make_basis
 from lfptools.analysis.windows import propose_windows
 from lfptools.choices import AnalysisChoices, WindowChoice
-from lfptools.csd import MIN_CONTACTS, CsdOperator, csd_operator, csd_signals
-from lfptools.evoked import SMOOTHING_GRID_MS, least_risk_smoothing, smooth
-from lfptools.layers import area_signal
+from lfptools.csd import CsdOperator
+from lfptools.evoked import SMOOTHING_GRID_MS, least_risk
 from lfptools.model import CutSession, Signals
-from lfptools.resample import bootstrap_weights, sign_flips
-from lfptools.trials import MIN_TRIALS
 from lfptools.waves import Search, landmarks
 
 CHOSEN_HERE = "window chosen on these trials"
@@ -25,22 +22,47 @@ CHOSEN_HERE = "window chosen on these trials"
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Prepared:
-    """What every analysis of a session starts from."""
+    """What every analysis of a session starts from, its windows known."""
 
-    cut: CutSession
+    basis: Basis
+    cut: CutSession  # its choices are those below
     choices: AnalysisChoices
-    conditions: tuple[str, ...]  # all, in order of appearance
-    estimated: tuple[str, ...]  # those with enough trials
-    weights: dict[str, np.ndarray]  # bootstrap, by estimated condition
-    signs: dict[str, np.ndarray]  # random signs, by estimated condition
-    operators: dict[str, CsdOperator]  # by area, where there are enough contacts
-    csd: dict[str, Signals]  # by area, every depth
     signals: dict[str, Signals]  # by area, the one that stands for it
     smooth_s: dict[str, float]  # SD of the Gaussian, by window
 
+    @property
+    def conditions(self) -> tuple[str, ...]:
+        """All conditions, in order of appearance."""
+        return self.basis.conditions
+
+    @property
+    def estimated(self) -> tuple[str, ...]:
+        """Conditions with enough trials."""
+        return self.basis.estimated
+
+    @property
+    def weights(self) -> dict[str, np.ndarray]:
+        """Bootstrap weights by estimated condition."""
+        return self.basis.weights
+
+    @property
+    def signs(self) -> dict[str, np.ndarray]:
+        """Random signs by estimated condition."""
+        return self.basis.signs
+
+    @property
+    def operators(self) -> dict[str, CsdOperator]:
+        """Operators by area, where there are enough contacts."""
+        return self.basis.operators
+
+    @property
+    def csd(self) -> dict[str, Signals]:
+        """Current source density of every depth, by area."""
+        return self.basis.csd
+
     def rows(self, condition: str) -> np.ndarray:
         """Bool per accepted trial."""
-        return self.cut.condition == condition
+        return self.basis.rows(condition)
 
     @property
     def finest_s(self) -> float:
@@ -62,109 +84,83 @@ class Prepared:
 
 def prepare(cut: CutSession) -> Prepared:
     """Choose signals, windows and smoothing, and draw the resamples."""
-    choices = cut.choices
-    conditions = cut.table.conditions
-    counts = {name: int(np.count_nonzero(cut.condition == name)) for name in conditions}
-    estimated = tuple(name for name in conditions if counts[name] >= MIN_TRIALS)
-    operators, csd = {}, {}
-    for trials in cut.areas:
-        if np.count_nonzero(~trials.contacts.bad) >= MIN_CONTACTS:
-            operators[trials.area] = csd_operator(
-                trials.contacts,
-                conductivity_s_m=choices.csd.conductivity_s_m,
-                method=choices.csd.method,
-            )
-            csd[trials.area] = csd_signals(trials, operators[trials.area])
+    return with_choices(make_basis(cut), cut.choices)
+
+
+def with_choices(basis: Basis, choices: AnalysisChoices) -> Prepared:
+    """Choose signals and smoothing for other windows or another kind of signal.
+
+    Parameters
+    ----------
+    basis : Basis
+        What no window changes; it must serve `choices`.
+    choices : AnalysisChoices
+        Where they name no window, windows are proposed from the averages.
+    """
+    assert basis.serves(choices)
     if not choices.window:
-        whole = (0.0, choices.trials.window_ms[1] / 1000)
-        signals = _area_signals(cut, csd, estimated, choices, {a.area: [whole] for a in cut.areas})
-        windows = propose_windows(list(signals.values()), cut.condition, list(estimated), whole)
-        choices = msgspec.structs.replace(choices, window=windows)
-        cut = replace(cut, choices=choices)
-    spans = {
-        area.area: [
-            window.span_s(area.area) for window in choices.window if window.holds(area.area)
-        ]
-        or [(0.0, choices.trials.window_ms[1] / 1000)]
-        for area in cut.areas
-    }
-    signals = _area_signals(cut, csd, estimated, choices, spans)
-    seed = choices.resample.seed
+        choices = msgspec.structs.replace(choices, window=_proposed(basis, choices))
+    signals = _area_signals(basis, choices)
     return Prepared(
-        cut=cut,
+        basis=basis,
+        cut=replace(basis.cut, choices=choices),
         choices=choices,
-        conditions=conditions,
-        estimated=estimated,
-        weights={
-            name: bootstrap_weights(counts[name], choices.resample.n, _rng(seed, 1, number))
-            for number, name in enumerate(estimated)
-        },
-        signs={
-            name: sign_flips(counts[name], choices.resample.n, _rng(seed, 2, number))
-            for number, name in enumerate(estimated)
-        },
-        operators=operators,
-        csd=csd,
         signals=signals,
         smooth_s={
-            window.name: _smoothing(signals, cut, estimated, choices, window)
-            for window in choices.window
+            window.name: _smoothing(basis, signals, choices, window) for window in choices.window
         },
     )
 
 
-def _rng(*seed: int) -> np.random.Generator:
-    return np.random.default_rng(list(seed))
+def _proposed(basis: Basis, choices: AnalysisChoices) -> list[WindowChoice]:
+    signals = list(_area_signals(basis, choices).values())
+    whole = (0.0, choices.trials.span_s[1])
+    return propose_windows(signals, basis.cut.condition, list(basis.estimated), whole)
 
 
-def _area_signals(
-    cut: CutSession,
-    csd: dict[str, Signals],
-    estimated: tuple[str, ...],
-    choices: AnalysisChoices,
-    spans_s: dict[str, list[tuple[float, float]]],
-) -> dict[str, Signals]:
-    rows = [cut.condition == name for name in estimated]
+def _area_signals(basis: Basis, choices: AnalysisChoices) -> dict[str, Signals]:
+    whole = (0.0, choices.trials.span_s[1])
     return {
-        trials.area: area_signal(
-            trials,
-            csd.get(trials.area),
-            kind=choices.direction.signal,
-            conditions=rows,
-            spans_s=spans_s[trials.area],
+        area.area: basis.signal(
+            area.area,
+            choices.direction.signal,
+            [each.span_s(area.area) for each in choices.window if each.holds(area.area)] or [whole],
         )
-        for trials in cut.areas
+        for area in basis.cut.areas
     }
 
 
 def _smoothing(
-    signals: dict[str, Signals],
-    cut: CutSession,
-    estimated: tuple[str, ...],
-    choices: AnalysisChoices,
-    window: WindowChoice,
+    basis: Basis, signals: dict[str, Signals], choices: AnalysisChoices, window: WindowChoice
 ) -> float:
     """Return a window's frozen SD in s: as given, or of least risk and at most half its waves."""
     given = choices.latency.smooth_ms
     if given != "auto":
         return float(given) / 1000
-    held = {area: signal for area, signal in signals.items() if window.holds(area)}
+    held = [signal for area, signal in signals.items() if window.holds(area)]
     if not held:
         return 0.0
-    searches = {
-        area: Search(window.span_s(area), window.extremum_in(area), "half") for area in held
-    }
+    searches = tuple(
+        (each.area, Search(window.span_s(each.area), window.extremum_in(each.area), "half"))
+        for each in held
+    )
+    key = ("smoothing", *(identity(each) for each in held), searches)
+    return basis.estimates.get(key, lambda: _least_smoothing(basis, held, dict(searches)))
+
+
+def _least_smoothing(basis: Basis, held: list[Signals], searches: dict[str, Search]) -> float:
     span_s = (
         min(search.flank_span_s[0] for search in searches.values()),
         max(search.prominence_span_s[1] for search in searches.values()),
     )
-    sd_s = least_risk_smoothing(list(held.values()), cut.condition, list(estimated), span_s)
+    risks = [basis.risk(each, name) for each in held for name in basis.estimated]
+    sd_s = least_risk(risks, span_s)
     widths = []
-    for area, signal in held.items():
-        smoothed = smooth(signal, sd_s)
-        for name in estimated:
-            mean = smoothed.data[cut.condition == name].mean(axis=0, dtype=float)
-            widths.append(_half_width(mean, smoothed.time_s, searches[area]))
+    for signal in held:
+        smoothed = basis.smoothed(signal, sd_s)
+        for name in basis.estimated:
+            mean = smoothed.data[basis.rows(name)].mean(axis=0, dtype=float)
+            widths.append(_half_width(mean, smoothed.time_s, searches[signal.area]))
     narrowest = np.nanmin([*widths, np.inf])
     allowed = [ms / 1000 for ms in SMOOTHING_GRID_MS if ms / 1000 <= min(sd_s, narrowest / 2)]
     return allowed[-1]

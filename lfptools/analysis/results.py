@@ -12,6 +12,7 @@ from lfptools.columns import COLUMNS
 from lfptools.evoked import Average
 from lfptools.model import Contacts, CutSession
 from lfptools.rates import RateCurve
+from lfptools.resample import false_discovery_rate
 
 Row = dict[str, Any]
 
@@ -60,3 +61,13 @@ def ms(value_s: float | np.ndarray) -> float:
 def note(*parts: str) -> str:
     """Join what is to be said of a row, empty parts left out."""
     return "; ".join(part for part in parts if part)
+
+
+def add_q(rows: list[Row], group: str | None) -> None:
+    """Write q into each row: the false discovery rate over the rows of the same measure."""
+    names = [row[group] if group else "" for row in rows]
+    for name in dict.fromkeys(names):
+        chosen = [row for row, each in zip(rows, names, strict=True) if each == name]
+        p = np.array([row.get("p", np.nan) for row in chosen], dtype=float)
+        for row, q in zip(chosen, false_discovery_rate(p), strict=True):
+            row["q"] = float(q)

@@ -2,18 +2,18 @@
 
 import numpy as np
 
-from lfptools.analysis.arrival import chosen_note, lag_rows, latency_rows, measure_areas
+from lfptools.analysis.arrival import lag_rows, latency_rows, measure_areas
 from lfptools.analysis.depth import sink_rows
+from lfptools.analysis.firing import firing_rows, named
 from lfptools.analysis.lead import direction_rows, estimate_pairs, verdict_rows
 from lfptools.analysis.prepared import Prepared, prepare
-from lfptools.analysis.results import Results, Row, note
+from lfptools.analysis.results import Results, Row, add_q
 from lfptools.columns import COLUMNS
 from lfptools.coupling import coupling_rows
 from lfptools.evoked import Average, average, smooth
 from lfptools.layers import lfp_signals
 from lfptools.model import CutSession, Session, Signals
-from lfptools.rates import finish_calls, firing_rows, rate_curves
-from lfptools.resample import false_discovery_rate
+from lfptools.rates import rate_curves
 from lfptools.trials import Progress, cut_trials, no_progress
 
 _NO_LFP = "no LFP was recorded"
@@ -41,24 +41,22 @@ def analyse(session: Session | CutSession, *, progress: Progress = no_progress) 
     prepared = prepare(trials)
     rows: dict[str, list[Row]] = {name: [] for name in COLUMNS}
     rows["trials"] = _trial_rows(prepared)
-    progress("finding the waves", 0.0)
-    areas = measure_areas(prepared)
+    areas = measure_areas(prepared, progress)
     rows["latencies"] = latency_rows(prepared, areas)
     rows["lags"] = lag_rows(prepared, areas)
     progress("mapping the depth", 0.0)
     rows["sinks"] = sink_rows(prepared)
     if trials.spikes is not None:
-        progress("counting the spikes", 0.0)
-        rows["firing"] = _firing_rows(prepared)
+        rows["firing"] = firing_rows(prepared, progress)
         progress("relating spikes to the field", 0.0)
         rng = np.random.default_rng([trials.choices.resample.seed, 4])
-        rows["coupling"] = _named(prepared, coupling_rows(prepared.cut, rng=rng))
-        _add_q(rows["coupling"], "measure")
+        rows["coupling"] = named(prepared, coupling_rows(prepared.cut, rng=rng))
+        add_q(rows["coupling"], "measure")
     pairs = estimate_pairs(prepared, progress)
     rows["direction"] = direction_rows(prepared, pairs)
     rows["verdicts"] = verdict_rows(prepared, pairs)
-    _add_q(rows["lags"], "feature")
-    _add_q(rows["direction"], "measure")
+    add_q(rows["lags"], "feature")
+    add_q(rows["direction"], "measure")
     progress("done", 1.0)
     level = trials.choices.resample.level
     return Results(
@@ -108,36 +106,6 @@ def _trial_rows(prepared: Prepared) -> list[Row]:
         }
         for index in range(len(table.time_s))
     ]
-
-
-def _firing_rows(prepared: Prepared) -> list[Row]:
-    rng = np.random.default_rng([prepared.choices.resample.seed, 3])
-    rows = firing_rows(prepared.cut, weights=prepared.weights, rng=rng)
-    _add_q(rows, None)
-    return _named(prepared, finish_calls(rows))
-
-
-def _named(prepared: Prepared, rows: list[Row]) -> list[Row]:
-    """Add the session's name, and say so where the window was chosen on the same trials."""
-    chosen = {window.name: chosen_note(window) for window in prepared.choices.window}
-    return [
-        {
-            "session": prepared.cut.name,
-            **row,
-            "note": note(str(row.get("note", "")), chosen[str(row["window"])]),
-        }
-        for row in rows
-    ]
-
-
-def _add_q(rows: list[Row], group: str | None) -> None:
-    """Write q into each row: the false discovery rate over the rows of the same measure."""
-    names = [row[group] if group else "" for row in rows]
-    for name in dict.fromkeys(names):
-        chosen = [row for row, each in zip(rows, names, strict=True) if each == name]
-        p = np.array([row.get("p", np.nan) for row in chosen], dtype=float)
-        for row, q in zip(chosen, false_discovery_rate(p), strict=True):
-            row["q"] = float(q)
 
 
 def _not_recorded(prepared: Prepared) -> dict[str, str]:

@@ -11,6 +11,25 @@ from dataclasses import dataclass
 import numpy as np
 
 
+def lagged_rows(x: np.ndarray, order: int) -> np.ndarray:
+    """Return z of every sample that has a past, trial by trial.
+
+    Parameters
+    ----------
+    x : ndarray, shape (n_trials, n_channels, n_samples)
+        Zero-mean stretches.
+    order : int
+        Largest lag p, in samples.
+
+    Returns
+    -------
+    ndarray, shape (n_trials, n_samples - p, d), d = n_channels (p + 1)
+    """
+    windows = np.lib.stride_tricks.sliding_window_view(x, order + 1, axis=-1)[..., ::-1]
+    n_trials, n_channels, n_rows, _ = windows.shape
+    return windows.transpose(0, 2, 1, 3).reshape(n_trials, n_rows, n_channels * (order + 1))
+
+
 def lagged_products(x: np.ndarray, order: int, *, intercept: bool = False) -> np.ndarray:
     """Return the lagged products of each trial.
 
@@ -27,12 +46,16 @@ def lagged_products(x: np.ndarray, order: int, *, intercept: bool = False) -> np
     -------
     ndarray, shape (n_trials, d, d), d = n_channels (p + 1)
     """
-    windows = np.lib.stride_tricks.sliding_window_view(x, order + 1, axis=-1)[..., ::-1]
-    n_trials, n_channels, n_rows, _ = windows.shape
-    z = windows.transpose(0, 2, 1, 3).reshape(n_trials, n_rows, n_channels * (order + 1))
+    z = lagged_rows(x, order)
     if intercept:
         z = z - z.mean(axis=1, keepdims=True)
     return z.transpose(0, 2, 1) @ z
+
+
+def mean_products(z: np.ndarray) -> np.ndarray:
+    """Return the mean over trials of the lagged products, (d, d), from `lagged_rows`."""
+    flat = z.reshape(-1, z.shape[-1])
+    return flat.T @ flat / len(z)
 
 
 def reversal(n_channels: int, order: int) -> np.ndarray:

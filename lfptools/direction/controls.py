@@ -11,9 +11,11 @@ import numpy as np
 from scipy.ndimage import uniform_filter1d
 
 from lfptools.direction.autoregression import (
-    lagged_products,
+    lagged_rows,
+    mean_products,
     residual_filters,
     residual_products,
+    reversal,
     reversed_products,
     with_ridge,
 )
@@ -35,25 +37,31 @@ class LeadTest:
     sign_changes: bool  # net changes sign when time is reversed, and agrees with the score
 
 
-def lead_scores(products: np.ndarray) -> np.ndarray:
+def lead_scores(z: np.ndarray) -> np.ndarray:
     """Return the lead score of each trial, shape (n_trials,); positive where a leads.
 
     Its mean over trials equals, to first order, net Granger causality minus that of the
-    time-reversed signals.
+    time-reversed signals. The score tr[K (G_n - J G_n J)], K a sum of c w w' over residual
+    filters w, is computed as energies of residuals: w' G_n w is that of the trial passed
+    through w, and w' J G_n J w that of the trial passed through w with its lags reversed.
 
     Parameters
     ----------
-    products : ndarray, shape (n_trials, d, d)
-        Lagged products of channels 0 (a) and 1 (b).
+    z : ndarray, shape (n_trials, n_rows, d)
+        `lagged_rows` of channels 0 (a) and 1 (b).
     """
-    backward = reversed_products(products, 2)
-    pooled = with_ridge((products + backward).mean(axis=0) / 2, RIDGE)
-    kernel = np.zeros_like(pooled)
+    mean = mean_products(z)
+    pooled = with_ridge((mean + reversed_products(mean, 2)) / 2, RIDGE)
+    filters, factors = [], []
     for target, sign in ((1, 1.0), (0, -1.0)):
         for given, part in (((target,), sign), ((0, 1), -sign)):
             w = residual_filters(pooled, 2, (target,), given)
-            kernel += part * (w.T @ w) / residual_products(pooled, w)
-    return np.einsum("ij,nji->n", kernel, products - backward)
+            filters.append(w[0])
+            factors.append(part / residual_products(pooled, w)[0, 0])
+    forward = np.array(filters)
+    both = np.concatenate([forward, forward[:, reversal(2, z.shape[-1] // 2 - 1)]])
+    energy = np.square(z @ both.T).sum(axis=1)
+    return energy @ np.array(factors + [-factor for factor in factors])
 
 
 def lag_scores(stretch: Stretch) -> np.ndarray:
@@ -96,8 +104,8 @@ def lead_test(stretch: Stretch, orders: tuple[int, ...], signs: np.ndarray) -> L
     """
     score = np.zeros(len(stretch.x))
     for order in orders:
-        products = lagged_products(stretch.x, order)
-        part = lead_scores(products)
+        z = lagged_rows(stretch.x, order)
+        part = lead_scores(z)
         score += part / np.linalg.norm(part)
     n_trials = len(score)
     rows = np.abs(signs @ score)
@@ -109,7 +117,7 @@ def lead_test(stretch: Stretch, orders: tuple[int, ...], signs: np.ndarray) -> L
     fisher = -np.log(
         [_ranks((lag_rows**2).sum(axis=1)), _ranks(np.abs(lag_rows).max(axis=1)), _ranks(rows)]
     ).sum(axis=0)
-    mean = with_ridge(products.mean(axis=0), RIDGE)  # of the largest order
+    mean = with_ridge(mean_products(z), RIDGE)  # of the largest order
     net = pair_granger(mean).net
     net_reversed = pair_granger(reversed_products(mean, 2)).net
     total = float(score.sum())

@@ -10,7 +10,6 @@ import numpy as np
 
 from lfptools.direction.autoregression import (
     Model,
-    fit_model,
     residual_filters,
     residual_products,
     reversed_products,
@@ -53,15 +52,38 @@ def block_granger(
 
 
 def pair_granger(products: np.ndarray) -> OneWay:
-    """Return Granger causality between channels 0 (a) and 1 (b), products (..., d, d)."""
+    """Return Granger causality between channels 0 (a) and 1 (b), products (..., d, d).
+
+    One Cholesky factor of (past of both, now of both) holds both full models: its last two
+    rows are what the past leaves unexplained. That of (own past, own now) holds the restricted
+    one.
+
+    Raises
+    ------
+    LinAlgError
+        If the products are singular.
+    """
+    width = products.shape[-1] // 2
+    past, now = np.arange(1, width), 0
+    both = _factor(products, np.concatenate([past, width + past, [now, width + now]]))[
+        ..., -2:, -2:
+    ]
+    own = [
+        _factor(products, start + np.append(past, now))[..., -1, -1] ** 2 for start in (0, width)
+    ]
+    full = (both**2).sum(axis=-1)
     return OneWay(
-        a_to_b=block_granger(products, 2, source=(0,), target=(1,)),
-        b_to_a=block_granger(products, 2, source=(1,), target=(0,)),
+        a_to_b=np.log(own[1] / full[..., 1]),
+        b_to_a=np.log(own[0] / full[..., 0]),
     )
 
 
-def pair_contrast(products: np.ndarray) -> OneWay:
-    """Return each one-way value minus its value in reversed time, products (..., d, d).
+def _factor(products: np.ndarray, index: np.ndarray) -> np.ndarray:
+    return np.linalg.cholesky(products[..., index[:, None], index[None, :]])
+
+
+def over_reversed(forward: OneWay, backward: OneWay) -> OneWay:
+    """Return each one-way value minus its value in reversed time.
 
     Instantaneous mixing, a common reference and unequal noise leave both alike and drop out.
 
@@ -70,8 +92,12 @@ def pair_contrast(products: np.ndarray) -> OneWay:
     Haufe, Nikulin, Mueller and Nolte (2013), NeuroImage 64:120-133; Winkler et al. (2016),
     IEEE Trans. Signal Process. 64:2746-2760.
     """
-    forward, backward = pair_granger(products), pair_granger(reversed_products(products, 2))
     return OneWay(forward.a_to_b - backward.a_to_b, forward.b_to_a - backward.b_to_a)
+
+
+def pair_contrast(products: np.ndarray) -> OneWay:
+    """Return `over_reversed` of a pair from its products (..., d, d)."""
+    return over_reversed(pair_granger(products), pair_granger(reversed_products(products, 2)))
 
 
 def transfer(model: Model, frequency_hz: np.ndarray, rate_hz: float) -> np.ndarray:
@@ -112,11 +138,8 @@ def granger_spectrum(model: Model, frequency_hz: np.ndarray, rate_hz: float) -> 
     return OneWay(a_to_b=into(1, 0), b_to_a=into(0, 1))
 
 
-def band_granger(
-    products: np.ndarray, n_rows: float, band_hz: tuple[float, float], rate_hz: float
-) -> OneWay:
-    """Return the mean of the Granger spectrum over a band, from products (..., d, d)."""
+def band_granger(model: Model, band_hz: tuple[float, float], rate_hz: float) -> OneWay:
+    """Return the mean of a two-channel model's Granger spectrum over a band."""
     n_bins = max(8, int(np.ceil(band_hz[1] - band_hz[0])))
-    frequency = np.linspace(*band_hz, n_bins)
-    spectrum = granger_spectrum(fit_model(products, 2, n_rows), frequency, rate_hz)
+    spectrum = granger_spectrum(model, np.linspace(*band_hz, n_bins), rate_hz)
     return OneWay(a_to_b=spectrum.a_to_b.mean(-1), b_to_a=spectrum.b_to_a.mean(-1))

@@ -1,17 +1,30 @@
 """The signals of two areas in, every direction estimate of one window and condition out."""
 
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import numpy as np
 
 from lfptools.bands import why_not
 from lfptools.choices import DirectionChoice, WindowChoice
-from lfptools.direction.autoregression import lagged_products, with_ridge
+from lfptools.direction.autoregression import (
+    fit_model,
+    lagged_products,
+    reversed_products,
+    with_ridge,
+)
 from lfptools.direction.controls import RIDGE, LeadTest, lead_test
 from lfptools.direction.cross_spectra import coefficients, trial_spectra
-from lfptools.direction.granger import OneWay, band_granger, pair_contrast, pair_granger
+from lfptools.direction.granger import OneWay, band_granger, over_reversed, pair_granger
 from lfptools.direction.phase_slope import PhaseSlope, phase_slope
-from lfptools.direction.prepare import Stretch, edge_s, orders_for, rate_for, stretch
+from lfptools.direction.prepare import (
+    Stretch,
+    edge_s,
+    orders_for,
+    rate_for,
+    stretch,
+    to_rate,
+)
 from lfptools.model import Signals
 from lfptools.resample import jackknife_interval
 from lfptools.trials import MIN_TRIALS
@@ -53,6 +66,59 @@ class PairEstimate:
     slopes: tuple[PhaseSlope | None, ...] = ()
     withheld: str = ""
     caveats: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Plan:
+    """How one pair is estimated in one window, and why it is not, where it is withheld."""
+
+    span_s: tuple[float, float]
+    rate_hz: float
+    orders: tuple[int, ...]
+    project: bool
+    withheld: str
+
+
+def plan_pair(
+    a: Signals,
+    b: Signals,
+    event_time_s: np.ndarray,
+    window: WindowChoice,
+    choices: DirectionChoice,
+) -> Plan:
+    """Return span, rate, orders and treatment of single trials, or why direction is withheld.
+
+    Parameters
+    ----------
+    a, b : Signals
+        The signals that stand for the areas, as recorded.
+    event_time_s : ndarray, shape (n_trials,)
+        Stimulus times of the condition's trials.
+    window : WindowChoice
+        Its `direction_span_s` is used.
+    choices : DirectionChoice
+        Rate, order, what is done about single trials.
+    """
+    span_s = window.direction_span_s
+    rate_hz = rate_for(span_s, [a.rate_hz, b.rate_hz], choices.rate_hz)
+    n_samples = round((span_s[1] - span_s[0]) * rate_hz)
+    orders = orders_for(n_samples, rate_hz, choices.order)
+    return Plan(
+        span_s=span_s,
+        rate_hz=rate_hz,
+        orders=orders,
+        project=choices.single_trial == "project"
+        or (choices.single_trial == "auto" and span_s[1] > 0),
+        withheld=refusals(a, b, event_time_s, span_s, rate_hz, orders),
+    )
+
+
+def ill_conditioned(mean: np.ndarray) -> str:
+    """Say that a fit is ill-conditioned, or nothing; `mean` holds the ridge, (d, d)."""
+    condition = np.linalg.cond(mean)
+    if condition > _WORST_CONDITION:
+        return f"the fit is ill-conditioned (condition number {condition:.1g})"
+    return ""
 
 
 def refusals(
@@ -115,6 +181,7 @@ def estimate_pair(
     signs: np.ndarray,
     level: float,
     caveats: tuple[str, ...] = (),
+    at_rate: Callable[[Signals, float], Signals] = to_rate,
 ) -> PairEstimate:
     """Estimate and test the direction between two areas.
 
@@ -136,27 +203,22 @@ def estimate_pair(
         Coverage of the intervals.
     caveats : tuple of str
         What the user must know about the two recordings.
+    at_rate : callable
+        Takes a signal to the common rate; a caller may keep what it returns.
     """
-    span_s = window.direction_span_s
-    rate_hz = rate_for(span_s, [a.rate_hz, b.rate_hz], choices.rate_hz)
-    n_samples = round((span_s[1] - span_s[0]) * rate_hz)
-    orders = orders_for(n_samples, rate_hz, choices.order)
-    why = refusals(a, b, event_time_s[rows], span_s, rate_hz, orders)
+    plan = plan_pair(a, b, event_time_s[rows], window, choices)
+    span_s, why = plan.span_s, plan.withheld
     n_trials = int(np.count_nonzero(rows))
-    bare = PairEstimate(a.area, b.area, n_trials, span_s, orders[-1], caveats=caveats)
+    bare = PairEstimate(a.area, b.area, n_trials, span_s, plan.orders[-1], caveats=caveats)
     if not why:
-        project = choices.single_trial == "project" or (
-            choices.single_trial == "auto" and span_s[1] > 0
-        )
-        both = stretch(a, b, rows, span_s, rate_hz=rate_hz, project=project)
-        products = lagged_products(both.x, orders[-1])
-        condition = np.linalg.cond(with_ridge(products.mean(axis=0), RIDGE))
-        if condition > _WORST_CONDITION:
-            why = f"the fit is ill-conditioned (condition number {condition:.1g})"
+        slow_a, slow_b = (at_rate(each, plan.rate_hz) for each in (a, b))
+        both = stretch(slow_a, slow_b, rows, span_s, project=plan.project)
+        products = lagged_products(both.x, plan.orders[-1])
+        why = ill_conditioned(with_ridge(products.mean(axis=0), RIDGE))
     if why:
         empty = _empty_estimates(choices.bands_hz, why)
         return replace(bare, estimates=empty, withheld=why)
-    test = lead_test(both, orders, signs)
+    test = lead_test(both, plan.orders, signs)
     fitted, contrast, contrast_row, error, both_above = _time_domain(products, test, level=level)
     by_band, slopes = _by_band(both, products, span_s, choices.bands_hz, level)
     lagged = Estimate("lagged_interaction", "all", p=test.p_lag, note="of either direction")
@@ -178,7 +240,8 @@ def _time_domain(
     left = with_ridge((total - products) / (len(products) - 1), RIDGE)
     mean = with_ridge(total / len(products), RIDGE)
     fitted, fitted_left = pair_granger(mean), pair_granger(left)
-    contrast, contrast_left = pair_contrast(mean), pair_contrast(left)
+    contrast = over_reversed(fitted, pair_granger(reversed_products(mean, 2)))
+    contrast_left = over_reversed(fitted_left, pair_granger(reversed_products(left, 2)))
     lo, hi, _ = jackknife_interval(fitted.net, fitted_left.net, level=level)
     row = Estimate("granger", "all", *_plain(fitted), float(lo), float(hi))
     lo, hi, error = jackknife_interval(contrast.net, contrast_left.net, level=level)
@@ -207,17 +270,21 @@ def _by_band(
     found = coefficients(both.x, both.rate_hz)
     spectra = trial_spectra(found)
     n_rows = both.x.shape[-1] - products.shape[-1] // 2 + 1
-    total = products.sum(axis=0)
+    carried = {band: why_not(edges, span_s, both.rate_hz) for band, edges in bands_hz.items()}
+    if not all(carried.values()):
+        total = products.sum(axis=0)
+        model, left = (
+            fit_model(with_ridge(each, RIDGE), 2, n_rows)
+            for each in (total / len(products), (total - products) / (len(products) - 1))
+        )
     for band, edges in bands_hz.items():
-        why = why_not(edges, span_s, both.rate_hz)
+        why = carried[band]
         if why:
             rows += [Estimate(each, band, note=why) for each in ("granger", "phase_slope")]
             slopes.append(None)
             continue
-        mean = with_ridge(total / len(products), RIDGE)
-        left = with_ridge((total - products) / (len(products) - 1), RIDGE)
-        value = band_granger(mean, n_rows, edges, both.rate_hz)
-        value_left = band_granger(left, n_rows, edges, both.rate_hz)
+        value = band_granger(model, edges, both.rate_hz)
+        value_left = band_granger(left, edges, both.rate_hz)
         lo, hi, _ = jackknife_interval(value.net, value_left.net, level=level)
         rows.append(Estimate("granger", band, *_plain(value), float(lo), float(hi)))
         slope = phase_slope(spectra, found.frequency_hz, edges, level=level)

@@ -1,6 +1,6 @@
 """The signals of two areas in, comparable stretches at one rate out, evoked response removed."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 import numpy as np
@@ -57,18 +57,18 @@ def orders_for(n_samples: int, rate_hz: float, asked: int | None) -> tuple[int, 
     return tuple(sorted({max(1, round(largest * share)) for share in (0.5, 0.75, 1.0)}))
 
 
-def to_rate(signals: Signals, rate_hz: float) -> tuple[np.ndarray, np.ndarray]:
-    """Return the signal at `rate_hz` and its time axis, (n_trials, n_times), (n_times,).
+def to_rate(signals: Signals, rate_hz: float) -> Signals:
+    """Return the signal at `rate_hz`.
 
     A zero-phase FIR whose cut-off and length in s depend on `rate_hz` alone, so that all areas
     pass through the same filter whatever rate they were recorded at.
     """
     ratio = Fraction(rate_hz / signals.rate_hz).limit_denominator(10_000)
     slow = resample_poly(
-        signals.data[:, 0].astype(float), ratio.numerator, ratio.denominator, axis=-1,
-        padtype="line",
-    )  # fmt: skip
-    return slow, signals.time_s[0] + np.arange(slow.shape[1]) / rate_hz
+        signals.data.astype(float), ratio.numerator, ratio.denominator, axis=-1, padtype="line"
+    )
+    time_s = signals.time_s[0] + np.arange(slow.shape[-1]) / rate_hz
+    return replace(signals, data=slow, time_s=time_s, rate_hz=rate_hz)
 
 
 def edge_s(rate_hz: float) -> float:
@@ -82,7 +82,6 @@ def stretch(
     rows: np.ndarray,
     span_s: tuple[float, float],
     *,
-    rate_hz: float,
     project: bool,
 ) -> Stretch:
     """Return both signals over the span, evoked response taken out.
@@ -94,22 +93,20 @@ def stretch(
     Parameters
     ----------
     first, second : Signals
-        One signal each, the same trials.
+        One signal each, the same trials, at one rate (`to_rate`).
     rows : ndarray of bool, shape (n_trials,)
         Trials of one condition.
     span_s : (float, float)
         Half-open span.
-    rate_hz : float
-        Common rate.
     project : bool
         Whether gain and shift are projected out.
     """
+    rate_hz = first.rate_hz
     n_samples = round((span_s[1] - span_s[0]) * rate_hz)
     parts, basis = [], [np.ones(n_samples), np.linspace(-1, 1, n_samples)]
     for signals in (first, second):
-        data, time_s = to_rate(signals, rate_hz)
-        start = int(np.ceil((span_s[0] - time_s[0]) * rate_hz - 1e-6))
-        trials = data[rows]
+        start = int(np.ceil((span_s[0] - signals.time_s[0]) * rate_hz - 1e-6))
+        trials = signals.data[rows, 0]
         mean = trials.mean(axis=0)
         inside = slice(start, start + n_samples)
         smooth = gaussian_filter1d(mean, _BASIS_SD_S * rate_hz, mode="nearest")

@@ -24,7 +24,7 @@ ORDER = [
     {"errors"}, {"units"}, {"checks"}, {"choices"}, {"model"}, {"columns"}, {"forward"}, {"io"},
     {"simulate"}, {"clean"}, {"trials"}, {"cut_cache"}, {"resample"},
     {"evoked", "waves", "components", "csd", "layers", "spikes", "bands", "firing_latency",
-     "rates", "spike_field", "coupling", "direction"},
+     "rate_change", "rates", "spike_field", "coupling", "direction"},
     {"contrast", "information"}, {"analysis"}, {"evidence"}, {"sensitivity", "plan"}, {"plot"},
     {"report"}, {"study"}, {"cli"},
 ]  # fmt: skip
@@ -34,7 +34,8 @@ BETWEEN = {
     "components": {"waves"},
     "layers": {"csd", "waves"},
     "firing_latency": {"spikes"},
-    "rates": {"spikes", "firing_latency"},
+    "rate_change": {"spikes"},
+    "rates": {"spikes", "firing_latency", "rate_change"},
     "spike_field": {"spikes", "bands"},
     "coupling": {"spikes", "spike_field", "bands"},
     "direction": {"bands"},

@@ -35,7 +35,8 @@ def neuro(*, bin_ms: float = 1.0, **windows: tuple[float, float]) -> CutSession:
 def neuro_rows(cut: CutSession) -> dict[str, dict]:
     rng = np.random.default_rng(1)
     weights = {"stimulus": resample.bootstrap_weights(469, 499, rng)}
-    rows = rates.firing_rows(cut, weights=weights, rng=rng)
+    signs = {"stimulus": resample.sign_flips(469, cut.choices.resample.n, rng)}
+    rows = rates.firing_rows(cut, weights=weights, signs=signs)
     q = resample.false_discovery_rate(np.array([row["p"] for row in rows]))
     finished = rates.finish_calls(
         [row | {"q": each} for row, each in zip(rows, q.tolist(), strict=True)]

@@ -7,7 +7,7 @@ from lfptools.analysis.windows import propose_windows
 from lfptools.csd import csd_operator, csd_signals
 from lfptools.errors import InputError
 from lfptools.evoked import SMOOTHING_GRID_MS, average, least_risk_smoothing, smooth
-from lfptools.layers import area_signal, layer_at, measure_sink, usable_contacts
+from lfptools.layers import area_signal, layer_at, measure_sinks, usable_contacts
 from lfptools.model import Contacts, Signals, Trials
 from lfptools.resample import bootstrap_weights, sign_flips
 from lfptools.waves import Search
@@ -30,15 +30,16 @@ def currents(noise=0.3, n_trials=60, sink_um=520.0, seed=1):
 def sink(csd, extremum="trough", usable=None, n=499):
     rng = np.random.default_rng(2)
     n_trials = len(csd.data)
-    return measure_sink(
+    (found,) = measure_sinks(
         smooth(csd, 0.002),
         np.ones(12, bool) if usable is None else usable,
         np.ones(n_trials, bool),
-        Search((0.01, 0.06), extremum, "half"),
+        (Search((0.01, 0.06), extremum, "half"),),
         weights=bootstrap_weights(n_trials, n, rng),
         signs=sign_flips(n_trials, n, rng),
         level=0.95,
     )
+    return found
 
 
 def test_the_planted_sink_is_found_in_depth_and_time():

@@ -34,11 +34,12 @@ def whisk(units, *, condition, n=499, **chosen) -> CutSession:
 
 def rows_of(cut, seed=1):
     rng = np.random.default_rng(seed)
-    weights = {
-        each: resample.bootstrap_weights(int((cut.condition == each).sum()), 499, rng)
-        for each in cut.table.conditions
+    counts = {each: int((cut.condition == each).sum()) for each in cut.table.conditions}
+    weights = {each: resample.bootstrap_weights(n, 499, rng) for each, n in counts.items()}
+    signs = {
+        each: resample.sign_flips(n, cut.choices.resample.n, rng) for each, n in counts.items()
     }
-    return rates.firing_rows(cut, weights=weights, rng=rng)
+    return rates.firing_rows(cut, weights=weights, signs=signs)
 
 
 @pytest.fixture(scope="module")
@@ -152,19 +153,21 @@ def test_a_latency_of_few_resamples_is_said():
 def test_no_units_or_no_windows_give_no_rows(responding):
     rng = np.random.default_rng(7)
     bare = session(choices(windows=WINDOWS), condition=["single"] * 10)
-    assert rates.firing_rows(bare, weights={}, rng=rng) == []
+    assert rates.firing_rows(bare, weights={}, signs={}) == []
     assert rates.rate_curves(bare, level=0.95) == ()
     unwindowed = whisk([fire(rng, RISE_FALL, 10)], condition=["single"] * 10, windows={})
     assert rows_of(unwindowed) == []
 
 
 def test_weights_must_fit(responding):
-    rng = np.random.default_rng(8)
     with pytest.raises(InputError, match="no bootstrap weights for condition 'single'"):
-        rates.firing_rows(responding, weights={}, rng=rng)
+        rates.firing_rows(responding, weights={}, signs={})
     wrong = {each: np.full((9, 3), 1 / 3) for each in ("single", "pad")}
     with pytest.raises(InputError, match=r"weights of 'single' has shape \(9, 3\)"):
-        rates.firing_rows(responding, weights=wrong, rng=rng)
+        rates.firing_rows(responding, weights=wrong, signs={})
+    fits = {each: np.full((9, 50), 1 / 50) for each in ("single", "pad")}
+    with pytest.raises(InputError, match="no random signs for condition 'single'"):
+        rates.firing_rows(responding, weights=fits, signs={})
 
 
 def test_bins_wider_than_the_window_are_refused(responding):
