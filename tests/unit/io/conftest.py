@@ -115,3 +115,48 @@ def bare(tmp_path: Path) -> Path:
 @pytest.fixture
 def session_text() -> str:
     return SESSION
+
+
+#: Every kind of comment, an area's own span, and tables behind the windows.
+COMMENTED_WINDOWS = """\
+# Windows, as agreed before the recording
+
+[[window]]   # the first wave
+name = "early"  # feedforward
+span_ms = [5, 40]# from the pilot
+direction_ms = [ 0 , 100 ]
+# extremum = "peak"
+
+  # M1 is later
+  [window.for.M1]
+  span_ms = [10, 50]   # by eye
+
+# the second wave
+[[window]]
+span_ms = [
+  50,   # after the first
+  150,
+]
+name = 'late'
+extremum = "peak"
+
+areas = ["S1"]
+# end of the windows
+
+# how large is too large
+[clean]
+amplitude_sd = 7.0   # SDs
+""".replace("# feedforward", "# feedforward  ")  # blanks at the end of a line
+
+
+@pytest.fixture
+def commented(bare: Path) -> Path:
+    """Return a session file whose windows carry comments."""
+    path = bare / "session.toml"
+    path.write_text(SESSION[: SESSION.index("[[window]]")] + COMMENTED_WINDOWS)
+    return path
+
+
+@pytest.fixture
+def commented_windows() -> str:
+    return COMMENTED_WINDOWS
