@@ -1,4 +1,4 @@
-"""A cut session and one window in; each unit's change in rate, trial by trial and tested, out.
+"""A cut session and one window in; each unit's change in rate, counted and tested, out.
 
 The change of a unit is the mean over trials of (rate in the window - rate in the baseline). Its
 interval is a bootstrap over trials, its p-value a sign flip of the trials' differences.
@@ -11,7 +11,7 @@ import numpy as np
 from lfptools import resample
 from lfptools.choices import Span, WindowChoice
 from lfptools.model import CutSession, Frozen
-from lfptools.spikes import binned_counts
+from lfptools.spikes import microseconds, spikes_around
 
 #: A unit with fewer spikes in baseline and window together is not estimated.
 MIN_SPIKES = 5
@@ -77,42 +77,66 @@ def stimuli_of(cut: CutSession, condition: str) -> np.ndarray:
     return cut.table.accepted_time_s()[cut.condition == condition]
 
 
-def count_spikes(cut: CutSession, condition: str, window: WindowChoice) -> Counts:
-    """Count the spikes of every unit whose area the window applies to.
+@dataclass(frozen=True, slots=True, eq=False)
+class SpikeTable(Frozen):
+    """The spikes of all units around the stimuli of one condition, in one list."""
+
+    unit: np.ndarray  # (n_spikes,) number in the session
+    trial: np.ndarray  # (n_spikes,) number in the condition
+    time_us: np.ndarray  # (n_spikes,) int, 0 at the stimulus
+    area: tuple[str, ...]  # (n_units,)
+    baseline_s: Span
+    n_trials: int
+
+    def count(self, first_us: np.ndarray, last_us: np.ndarray) -> np.ndarray:
+        """Return the spikes in [first, last) of each unit, (n_trials, n_units)."""
+        inside = (self.time_us >= first_us[self.unit]) & (self.time_us < last_us[self.unit])
+        n_units = len(self.area)
+        flat = self.trial[inside] * n_units + self.unit[inside]
+        counts = np.bincount(flat, minlength=self.n_trials * n_units)
+        return counts.reshape(self.n_trials, n_units)
+
+
+def spike_table(cut: CutSession, condition: str) -> SpikeTable:
+    """Return the spikes around the stimuli of a condition, over the window of a trial.
 
     Raises
     ------
     InputError
         If the spike times of a unit do not rise.
     """
-    units, areas, times = _units_in(cut, window)
     stimulus_s = stimuli_of(cut, condition)
-    baseline_s = cut.choices.trials.baseline_s
-    spans = tuple(window.span_s(area) for area in areas)
-    before = [_count_in(time_s, stimulus_s, baseline_s) for time_s in times]
-    after = [_count_in(time_s, stimulus_s, span) for time_s, span in zip(times, spans, strict=True)]
-    shape = (len(units), len(stimulus_s))
-    return Counts(
-        unit=np.array(units, dtype=int),
-        span_s=spans,
-        baseline_s=baseline_s,
-        in_baseline=np.reshape(before, shape).astype(int).T,
-        in_window=np.reshape(after, shape).astype(int).T,
+    trials = cut.choices.trials
+    span_s = (
+        min(trials.span_s[0], trials.baseline_s[0]),
+        max(trials.span_s[1], trials.baseline_s[1]),
+    )
+    times = () if cut.spikes is None else cut.spikes.time_s
+    found = [spikes_around(each, stimulus_s, span_s=span_s) for each in times]
+    none = np.empty(0, dtype=int)
+    return SpikeTable(
+        unit=np.repeat(np.arange(len(found)), [len(each) for each in found]),
+        trial=np.concatenate([none, *(each.trial for each in found)]),
+        time_us=np.concatenate([none, *(each.time_us for each in found)]),
+        area=() if cut.spikes is None else cut.spikes.area,
+        baseline_s=trials.baseline_s,
+        n_trials=len(stimulus_s),
     )
 
 
-def _units_in(
-    cut: CutSession, window: WindowChoice
-) -> tuple[list[int], list[str], list[np.ndarray]]:
-    if cut.spikes is None:
-        return [], [], []
-    units = [unit for unit, area in enumerate(cut.spikes.area) if window.holds(area)]
-    areas = [cut.spikes.area[unit] for unit in units]
-    return units, areas, [cut.spikes.time_s[unit] for unit in units]
-
-
-def _count_in(time_s: np.ndarray, stimulus_s: np.ndarray, span_s: Span) -> np.ndarray:
-    return binned_counts(time_s, stimulus_s, edges_s=np.array(span_s))[:, 0]
+def count_spikes(table: SpikeTable, window: WindowChoice) -> Counts:
+    """Count the spikes of every unit whose area the window applies to, before and after."""
+    held = np.array([window.holds(area) for area in table.area], dtype=bool)
+    spans = tuple(window.span_s(area) for area in table.area)
+    edges_us = microseconds(np.array([table.baseline_s, *spans]))
+    before = np.broadcast_to(edges_us[:1], (len(spans), 2))
+    return Counts(
+        unit=np.flatnonzero(held),
+        span_s=tuple(span for span, each in zip(spans, held, strict=True) if each),
+        baseline_s=table.baseline_s,
+        in_baseline=table.count(before[:, 0], before[:, 1])[:, held],
+        in_window=table.count(edges_us[1:, 0], edges_us[1:, 1])[:, held],
+    )
 
 
 def tested_changes(

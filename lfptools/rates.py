@@ -16,7 +16,15 @@ from lfptools.choices import Span, WindowChoice
 from lfptools.errors import InputError
 from lfptools.firing_latency import poisson_latency, why_no_latency
 from lfptools.model import CutSession
-from lfptools.rate_change import MIN_SPIKES, Counts, count_spikes, stimuli_of, tested_changes
+from lfptools.rate_change import (
+    MIN_SPIKES,
+    Counts,
+    SpikeTable,
+    count_spikes,
+    spike_table,
+    stimuli_of,
+    tested_changes,
+)
 from lfptools.spikes import bin_edges, binned_counts, spikes_around
 from lfptools.trials import FEW_TRIALS, MIN_TRIALS, window_mask
 
@@ -50,11 +58,12 @@ def firing_rows(
         If the weights of a condition are missing or do not fit its trials, or spike times do
         not rise.
     """
-    parts = [
-        (number, place, window_rows(cut, condition, window, weights=weights, signs=signs))
-        for number, condition in enumerate(cut.table.conditions)
-        for place, window in enumerate(cut.choices.window)
-    ]
+    parts = []
+    for number, condition in enumerate(cut.table.conditions):
+        table = spike_table(cut, condition)
+        for place, window in enumerate(cut.choices.window):
+            rows = window_rows(cut, table, condition, window, weights=weights, signs=signs)
+            parts.append((number, place, rows))
     return in_order(parts)
 
 
@@ -76,14 +85,18 @@ def in_order(parts: list[tuple[int, int, dict[int, dict]]]) -> list[dict]:
 
 def window_rows(
     cut: CutSession,
+    table: SpikeTable,
     condition: str,
     window: WindowChoice,
     *,
     weights: Mapping[str, np.ndarray],
     signs: Mapping[str, np.ndarray],
 ) -> dict[int, dict]:
-    """Return the rows of one window and condition, by number of the unit."""
-    counts = count_spikes(cut, condition, window)
+    """Return the rows of one window and condition, by number of the unit.
+
+    `table` is the `spike_table` of the condition; see `firing_rows` for the rest.
+    """
+    counts = count_spikes(table, window)
     rows = [_empty_row(cut, counts, place, condition, window) for place in range(len(counts.unit))]
     if len(counts.in_window) < MIN_TRIALS:
         rows = [row | {"note": FEW_TRIALS} for row in rows]

@@ -17,11 +17,12 @@ from lfptools.direction.prepare import to_rate
 from lfptools.evoked import SmoothingRisk, smooth, smoothing_risk
 from lfptools.layers import Candidates, candidates, chosen, grand_mean, strongest
 from lfptools.model import CutSession, Signals
+from lfptools.rate_change import SpikeTable, spike_table
 from lfptools.resample import bootstrap_weights, sign_flips
 from lfptools.trials import MIN_TRIALS
 
 #: Courses (one signal, all trials) and estimates kept in memory.
-_MOST_COURSES, _MOST_ESTIMATES = 64, 4096
+_MOST_COURSES, _MOST_ESTIMATES = 96, 2048
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -62,6 +63,17 @@ class Basis:
     def smoothed(self, signal: Signals, sd_s: float) -> Signals:
         """Return the signal of an area smoothed."""
         return self.courses.get(("smoothed", *identity(signal), sd_s), lambda: smooth(signal, sd_s))
+
+    def smoothed_mean(self, signal: Signals, sd_s: float, condition: str) -> np.ndarray:
+        """Return the average of the smoothed signal of an area, shape (1, n_times)."""
+        return self.courses.get(
+            ("mean", *identity(signal), sd_s, condition),
+            lambda: self.smoothed(signal, sd_s).data[self.rows(condition)].mean(0, dtype=float),
+        )
+
+    def spikes(self, condition: str) -> SpikeTable:
+        """Return the spikes of all units around the stimuli of a condition."""
+        return self.courses.get(("spikes", condition), lambda: spike_table(self.cut, condition))
 
     def at_rate(self, signal: Signals, rate_hz: float) -> Signals:
         """Return the signal of an area at a common rate."""

@@ -32,7 +32,12 @@ def _window_rows(prepared: Prepared, condition: str, window: WindowChoice) -> di
     kept = basis.estimates.get(
         ("firing", condition, msgspec.json.encode(window)),
         lambda: window_rows(
-            basis.cut, condition, window, weights=basis.weights, signs=basis.firing_signs
+            basis.cut,
+            basis.spikes(condition),
+            condition,
+            window,
+            weights=basis.weights,
+            signs=basis.firing_signs,
         ),
     )
     return {unit: dict(row) for unit, row in kept.items()}

@@ -157,10 +157,10 @@ def _least_smoothing(basis: Basis, held: list[Signals], searches: dict[str, Sear
     sd_s = least_risk(risks, span_s)
     widths = []
     for signal in held:
-        smoothed = basis.smoothed(signal, sd_s)
+        time_s = basis.smoothed(signal, sd_s).time_s
         for name in basis.estimated:
-            mean = smoothed.data[basis.rows(name)].mean(axis=0, dtype=float)
-            widths.append(_half_width(mean, smoothed.time_s, searches[signal.area]))
+            mean = basis.smoothed_mean(signal, sd_s, name)
+            widths.append(_half_width(mean, time_s, searches[signal.area]))
     narrowest = np.nanmin([*widths, np.inf])
     allowed = [ms / 1000 for ms in SMOOTHING_GRID_MS if ms / 1000 <= min(sd_s, narrowest / 2)]
     return allowed[-1]

@@ -11,25 +11,6 @@ from dataclasses import dataclass
 import numpy as np
 
 
-def lagged_rows(x: np.ndarray, order: int) -> np.ndarray:
-    """Return z of every sample that has a past, trial by trial.
-
-    Parameters
-    ----------
-    x : ndarray, shape (n_trials, n_channels, n_samples)
-        Zero-mean stretches.
-    order : int
-        Largest lag p, in samples.
-
-    Returns
-    -------
-    ndarray, shape (n_trials, n_samples - p, d), d = n_channels (p + 1)
-    """
-    windows = np.lib.stride_tricks.sliding_window_view(x, order + 1, axis=-1)[..., ::-1]
-    n_trials, n_channels, n_rows, _ = windows.shape
-    return windows.transpose(0, 2, 1, 3).reshape(n_trials, n_rows, n_channels * (order + 1))
-
-
 def lagged_products(x: np.ndarray, order: int, *, intercept: bool = False) -> np.ndarray:
     """Return the lagged products of each trial.
 
@@ -46,16 +27,40 @@ def lagged_products(x: np.ndarray, order: int, *, intercept: bool = False) -> np
     -------
     ndarray, shape (n_trials, d, d), d = n_channels (p + 1)
     """
-    z = lagged_rows(x, order)
+    windows = np.lib.stride_tricks.sliding_window_view(x, order + 1, axis=-1)[..., ::-1]
+    n_trials, n_channels, n_rows, _ = windows.shape
+    z = windows.transpose(0, 2, 1, 3).reshape(n_trials, n_rows, n_channels * (order + 1))
     if intercept:
         z = z - z.mean(axis=1, keepdims=True)
     return z.transpose(0, 2, 1) @ z
 
 
-def mean_products(z: np.ndarray) -> np.ndarray:
-    """Return the mean over trials of the lagged products, (d, d), from `lagged_rows`."""
-    flat = z.reshape(-1, z.shape[-1])
-    return flat.T @ flat / len(z)
+def mean_products(x: np.ndarray, order: int) -> np.ndarray:
+    """Return the mean over trials of the lagged products, (d, d), without those of each trial.
+
+    The products of lags i + 1 and j + 1 are those of i and j, with one product more at the
+    start of the stretch and one less at its end: only those of lag 0 are summed over samples.
+
+    Parameters
+    ----------
+    x, order
+        As in `lagged_products`.
+    """
+    n_trials, n_channels, n_samples = x.shape
+    width = order + 1
+    by_channel = np.ascontiguousarray(x.transpose(1, 0, 2))
+    now = by_channel[..., order:].reshape(n_channels, -1)
+    products = np.empty((n_channels, n_channels, width, width))  # [a, b, lag of a, lag of b]
+    for lag in range(width):
+        past = by_channel[..., order - lag : n_samples - lag].reshape(n_channels, -1)
+        products[:, :, 0, lag] = now @ past.T
+    products[:, :, :, 0] = products[:, :, 0].transpose(1, 0, 2)
+    start = x[..., :order][..., ::-1].reshape(n_trials, -1)
+    end = x[..., n_samples - order :][..., ::-1].reshape(n_trials, -1)
+    step = (start.T @ start - end.T @ end).reshape(n_channels, order, n_channels, order)
+    for lag in range(order):
+        products[:, :, lag + 1, 1:] = products[:, :, lag, :-1] + step[:, lag]
+    return products.transpose(0, 2, 1, 3).reshape(n_channels * width, -1) / n_trials
 
 
 def reversal(n_channels: int, order: int) -> np.ndarray:

@@ -8,14 +8,13 @@ distribution. Trials are reversed at random: the lead score of a trial then flip
 from dataclasses import dataclass
 
 import numpy as np
+from scipy.fft import irfft, next_fast_len, rfft
 from scipy.ndimage import uniform_filter1d
 
 from lfptools.direction.autoregression import (
-    lagged_rows,
     mean_products,
     residual_filters,
     residual_products,
-    reversal,
     reversed_products,
     with_ridge,
 )
@@ -37,7 +36,7 @@ class LeadTest:
     sign_changes: bool  # net changes sign when time is reversed, and agrees with the score
 
 
-def lead_scores(z: np.ndarray) -> np.ndarray:
+def lead_scores(x: np.ndarray, order: int) -> np.ndarray:
     """Return the lead score of each trial, shape (n_trials,); positive where a leads.
 
     Its mean over trials equals, to first order, net Granger causality minus that of the
@@ -47,21 +46,35 @@ def lead_scores(z: np.ndarray) -> np.ndarray:
 
     Parameters
     ----------
-    z : ndarray, shape (n_trials, n_rows, d)
-        `lagged_rows` of channels 0 (a) and 1 (b).
+    x : ndarray, shape (n_trials, 2, n_samples)
+        Channels 0 (a) and 1 (b), zero-mean.
+    order : int
+        Autoregressive order.
     """
-    mean = mean_products(z)
+    mean = mean_products(x, order)
     pooled = with_ridge((mean + reversed_products(mean, 2)) / 2, RIDGE)
     filters, factors = [], []
     for target, sign in ((1, 1.0), (0, -1.0)):
         for given, part in (((target,), sign), ((0, 1), -sign)):
             w = residual_filters(pooled, 2, (target,), given)
-            filters.append(w[0])
+            filters.append(w.reshape(2, order + 1))
             factors.append(part / residual_products(pooled, w)[0, 0])
-    forward = np.array(filters)
-    both = np.concatenate([forward, forward[:, reversal(2, z.shape[-1] // 2 - 1)]])
-    energy = np.square(z @ both.T).sum(axis=1)
-    return energy @ np.array(factors + [-factor for factor in factors])
+    forward = _energies(x, np.array(filters))
+    backward = _energies(x, np.array(filters)[..., ::-1])
+    return (forward - backward) @ np.array(factors)
+
+
+def _energies(x: np.ndarray, filters: np.ndarray) -> np.ndarray:
+    """Return the energy of each trial behind each filter, (n_trials, n_filters).
+
+    `filters` is (n_filters, n_channels, p + 1), lag 0 first; samples without a past of p others
+    do not count.
+    """
+    n_samples, order = x.shape[-1], filters.shape[-1] - 1
+    # Wrapped samples of the circular convolution fall on those without a past.
+    n_fft = next_fast_len(n_samples, real=True)
+    passed = np.einsum("nct,kct->nkt", rfft(x, n_fft), rfft(filters, n_fft), optimize=False)
+    return np.square(irfft(passed, n_fft)[..., order:n_samples]).sum(axis=-1)
 
 
 def lag_scores(stretch: Stretch) -> np.ndarray:
@@ -104,8 +117,7 @@ def lead_test(stretch: Stretch, orders: tuple[int, ...], signs: np.ndarray) -> L
     """
     score = np.zeros(len(stretch.x))
     for order in orders:
-        z = lagged_rows(stretch.x, order)
-        part = lead_scores(z)
+        part = lead_scores(stretch.x, order)
         score += part / np.linalg.norm(part)
     n_trials = len(score)
     rows = np.abs(signs @ score)
@@ -117,7 +129,7 @@ def lead_test(stretch: Stretch, orders: tuple[int, ...], signs: np.ndarray) -> L
     fisher = -np.log(
         [_ranks((lag_rows**2).sum(axis=1)), _ranks(np.abs(lag_rows).max(axis=1)), _ranks(rows)]
     ).sum(axis=0)
-    mean = with_ridge(mean_products(z), RIDGE)  # of the largest order
+    mean = with_ridge(mean_products(stretch.x, orders[-1]), RIDGE)
     net = pair_granger(mean).net
     net_reversed = pair_granger(reversed_products(mean, 2)).net
     total = float(score.sum())

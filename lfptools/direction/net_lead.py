@@ -12,7 +12,7 @@ import numpy as np
 from scipy.special import stdtrit
 
 from lfptools.choices import DirectionChoice, WindowChoice
-from lfptools.direction.autoregression import lagged_rows, mean_products, with_ridge
+from lfptools.direction.autoregression import mean_products, with_ridge
 from lfptools.direction.controls import RIDGE, lead_scores
 from lfptools.direction.granger import pair_contrast
 from lfptools.direction.pair import ill_conditioned, plan_pair
@@ -69,12 +69,11 @@ def net_lead(
         return NetLead(a.area, b.area, n_trials, withheld=plan.withheld)
     slow_a, slow_b = (at_rate(each, plan.rate_hz) for each in (a, b))
     both = stretch(slow_a, slow_b, rows, plan.span_s, project=plan.project)
-    z = lagged_rows(both.x, plan.orders[-1])
-    mean = with_ridge(mean_products(z), RIDGE)
+    mean = with_ridge(mean_products(both.x, plan.orders[-1]), RIDGE)
     why = ill_conditioned(mean)
     if why:
         return NetLead(a.area, b.area, n_trials, withheld=why)
     net = float(pair_contrast(mean).net)
-    error = lead_scores(z).std(ddof=1) / np.sqrt(n_trials)
+    error = lead_scores(both.x, plan.orders[-1]).std(ddof=1) / np.sqrt(n_trials)
     half = float(stdtrit(n_trials - 1, (1 + level) / 2) * error)
     return NetLead(a.area, b.area, n_trials, net, net - half, net + half)

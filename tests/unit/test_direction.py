@@ -5,10 +5,15 @@ import pytest
 
 from lfptools.choices import DirectionChoice, WindowChoice
 from lfptools.direction import verdict as rules
-from lfptools.direction.autoregression import lagged_products, lagged_rows, reversed_products
+from lfptools.direction.autoregression import (
+    lagged_products,
+    mean_products,
+    reversed_products,
+)
 from lfptools.direction.controls import LeadTest, lead_scores, lead_test
 from lfptools.direction.cross_spectra import coefficients, trial_spectra
 from lfptools.direction.granger import pair_contrast, pair_granger
+from lfptools.direction.net_lead import net_lead
 from lfptools.direction.pair import PairEstimate, estimate_pair
 from lfptools.direction.phase_slope import PhaseSlope, phase_slope
 from lfptools.direction.prepare import Stretch, orders_for, rate_for, stretch, to_rate
@@ -38,19 +43,46 @@ def test_reversed_products_are_those_of_the_reversed_signals():
     np.testing.assert_allclose(reversed_products(products, 2), backward, atol=1e-10)
 
 
+@pytest.mark.parametrize("order", [1, 7, 16])
+def test_mean_products_are_the_mean_of_those_of_the_trials(order):
+    x = np.random.default_rng(1).normal(size=(9, 2, 60)).cumsum(axis=-1)
+    each = lagged_products(x, order)
+    np.testing.assert_allclose(mean_products(x, order), each.mean(axis=0), rtol=1e-10)
+
+
+def test_scores_are_traces_of_the_products():
+    # tr[K (G - J G J)] of each trial, K written out from least squares.
+    x, order = coupled(n_trials=12).x, 6
+    products = lagged_products(x, order)
+    difference = products - reversed_products(products, 2)
+    pooled = (products + reversed_products(products, 2)).mean(axis=0) / 2
+    pooled = pooled + 1e-3 * np.diag(np.diag(pooled))
+    kernel = np.zeros_like(pooled)
+    width = order + 1
+    for target, sign in ((1, 1), (0, -1)):
+        for given, part in (((target,), sign), ((0, 1), -sign)):
+            past = np.concatenate([np.arange(1, width) + width * each for each in given])
+            w = np.zeros(len(pooled))
+            w[target * width] = 1
+            w[past] = -np.linalg.solve(pooled[np.ix_(past, past)], pooled[past, target * width])
+            kernel += part * np.outer(w, w) / (w @ pooled @ w)
+    expected = [np.trace(kernel @ each) for each in difference]
+    np.testing.assert_allclose(lead_scores(x, order), expected, atol=1e-10)
+
+
 def test_score_is_the_net_contrast_to_first_order():
     # A mean of scores near net minus reversed net where the coupling is weak.
     both = coupled(n_trials=200, c=0.15)
     products = lagged_products(both.x, 8)
     exact = pair_contrast(products.mean(axis=0)).net
-    score = lead_scores(lagged_rows(both.x, 8)).mean()
+    score = lead_scores(both.x, 8).mean()
     assert score == pytest.approx(exact, rel=0.1)
 
 
 def test_score_changes_sign_with_the_order_of_the_pair():
     both = coupled()
-    forward = lead_scores(lagged_rows(both.x, 8))
-    backward = lead_scores(lagged_rows(both.x[:, ::-1], 8))
+    forward = lead_scores(both.x, 8)
+    backward = lead_scores(both.x[:, ::-1], 8)
     np.testing.assert_allclose(forward, -backward, atol=1e-10)
 
 
@@ -166,6 +198,41 @@ def pair(span_ms=(0.0, 100.0), n=40, seed=3, **choices):
         area("S1", x[0]), area("M1", x[1]), np.ones(n, dtype=bool), np.arange(n) * spacing,
         window, choices=DirectionChoice(**choices), signs=signs(n, 199), level=0.95,
     )  # fmt: skip
+
+
+def test_the_quick_net_is_that_of_the_full_estimate():
+    rng = np.random.default_rng(5)
+    a, b = area("S1", rng.normal(size=(40, 500))), area("M1", rng.normal(size=(40, 500)))
+    window = WindowChoice(name="early", span_ms=(5, 40), direction_ms=(0, 100))
+    given = (a, b, np.arange(40) % 2 == 0, np.arange(40.0), window)
+    quick = net_lead(*given, choices=DirectionChoice(), level=0.95)
+    full = estimate_pair(*given, choices=DirectionChoice(), signs=signs(20, 99), level=0.95)
+    row = next(each for each in full.estimates if each.measure == "granger_minus_reversed")
+    assert quick.net == pytest.approx(row.net, rel=1e-9)
+    assert (quick.n_trials, quick.withheld) == (20, "")
+    short = WindowChoice(name="early", span_ms=(5, 40))
+    held = net_lead(*given[:-1], short, choices=DirectionChoice(), level=0.95)
+    assert "60 ms are needed" in held.withheld
+    assert np.isnan(held.net)
+
+
+@pytest.mark.parametrize("c", [0.0, 0.25])
+def test_the_quick_interval_is_as_wide_as_the_net_varies(c):
+    # Over 80 sessions the half-width over t (40 trials: 2.0227, t table) is an estimate of the
+    # SD of the net; the SD of an SD of 80 is 8 %, so .75 to 1.35 is more than 3 of them. At no
+    # coupling the score's spread is known to be too large by up to sqrt(2).
+    window = WindowChoice(name="early", span_ms=(50, 150))
+    nets, errors = [], []
+    for seed in range(80):
+        x = coupled(n_trials=40, n_samples=500, c=c, seed=seed).x
+        found = net_lead(
+            area("S1", x[:, 0]), area("M1", x[:, 1]), np.ones(40, dtype=bool), np.arange(40.0),
+            window, choices=DirectionChoice(order=8, single_trial="keep"), level=0.95,
+        )  # fmt: skip
+        nets.append(found.net)
+        errors.append((found.hi - found.lo) / 2 / 2.0227)
+    ratio = np.mean(errors) / np.std(nets, ddof=1)
+    assert 0.75 <= ratio <= (1.35 if c else 1.35 * np.sqrt(2))
 
 
 @pytest.mark.parametrize(
