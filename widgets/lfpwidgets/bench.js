@@ -97,9 +97,11 @@ function render({ model, el }) {
       const length = last - first;
       first = Math.min(Math.max(first, low), high - length);
       last = first + length;
-    } else if (moved === "first") first = Math.min(Math.max(first, low), last - least);
-    else last = Math.max(Math.min(last, high), first + least);
-    return [grid(first), grid(last)];
+      return [grid(first), grid(last)];
+    }
+    // The edge that is not held stays where it is, on the grid or not.
+    if (moved === "first") return [grid(Math.min(Math.max(first, low), last - least)), last];
+    return [first, grid(Math.max(Math.min(last, high), first + least))];
   }
 
   // --- windows over the pictures --------------------------------------------------------------
@@ -130,25 +132,43 @@ function render({ model, el }) {
   function onKey(event, name, edge) {
     const step = scene.geometry.step;
     const by = { ArrowLeft: -1, ArrowRight: 1, ArrowDown: -1, ArrowUp: 1, PageDown: -10, PageUp: 10 }[event.key];
+    if (event.shiftKey) edge = "both";
     const [first, last] = spans[name];
+    if (by === undefined && event.key !== "Home" && event.key !== "End") return;
+    if (edge === "both" && by === undefined) return;
+    grip(name);
     if (by !== undefined) {
       const delta = by * step;
       if (edge === "both") shift(name, edge, first + delta, last + delta);
       else if (edge === "first") shift(name, edge, first + delta, last);
       else shift(name, edge, first, last + delta);
-    } else if (event.key === "Home" || event.key === "End") {
+    } else {
       const [low, high] = scene.geometry.bounds;
       const to = event.key === "Home" ? low : high;
       if (edge === "first") shift(name, edge, to, last);
-      else if (edge === "last") shift(name, edge, first, to);
-      else return;
-    } else return;
+      else shift(name, edge, first, to);
+    }
     event.preventDefault();
     event.stopPropagation();
-    clearTimeout(settle);
-    settle = setTimeout(() => tell({ do: "settle" }), 400);
+    rest = setTimeout(() => { rest = null; letGo(); }, 400);
   }
-  let settle = null;
+
+  // A burst of keys, like a drag, is one step of undo: gripped at its start, let go at its end.
+  let rest = null;
+  function grip(name) {
+    if (rest === null) tell({ do: "grip", name });
+    clearTimeout(rest);
+    rest = null;
+  }
+
+  function letGo() {
+    if (wanted) {
+      flying = true;
+      tell(wanted);
+      wanted = null;
+    }
+    tell({ do: "settle" });
+  }
 
   function grab(event, name, edge) {
     if (event.button !== undefined && event.button !== 0) return;
@@ -156,7 +176,7 @@ function render({ model, el }) {
     event.stopPropagation();
     event.currentTarget.focus();
     held = { name, edge, from: msAt(event.clientX), first: spans[name][0], last: spans[name][1] };
-    tell({ do: "take", name });
+    tell({ do: "grip", name });
     window.addEventListener("mousemove", follow);
     window.addEventListener("mouseup", release, { once: true });
   }
@@ -172,7 +192,7 @@ function render({ model, el }) {
   function release() {
     window.removeEventListener("mousemove", follow);
     held = null;
-    tell({ do: "settle" });
+    letGo();
   }
 
   function handle(name, edge) {
@@ -329,12 +349,19 @@ function render({ model, el }) {
   }
 
   // --- answers ------------------------------------------------------------------------------------
-  function grid2(caption, head, rows) {
-    return make("table", { class: "lfp-grid" },
+  function answerTable({ caption, head, rows, old }) {
+    return make("table", { class: old ? "lfp-grid lfp-old" : "lfp-grid" },
       make("caption", { textContent: caption }),
       make("thead", {}, make("tr", {}, ...head.map((name) => make("th", { textContent: name, scope: "col" })))),
       make("tbody", {}, ...rows.map((cells) => make("tr", {}, ...cells.map((cell) =>
-        make("td", {}, typeof cell === "string" ? document.createTextNode(cell) : cell))))));
+        make("td", { class: typeof cell === "string" && cell.length > 34 ? "lfp-long" : "" }, cell))))));
+  }
+
+  function folded(cell, open) {
+    const details = make("details", { "data-key": cell.key, open: open.has(cell.key) },
+      make("summary", { textContent: cell.text }));
+    for (const line of cell.more) details.append(make("p", { textContent: line }));
+    return details;
   }
 
   function drawAnswers(answer) {
@@ -342,14 +369,8 @@ function render({ model, el }) {
     answers.replaceChildren(
       make("h3", { textContent: answer.heading }),
       make("p", { class: "lfp-pending", textContent: answer.pending }),
-      ...answer.tables.map((table) => grid2(table.caption, table.head, table.rows.map((row) =>
-        row.map((cell) => {
-          if (typeof cell === "string") return cell;
-          const details = make("details", { "data-key": cell.key, open: open.has(cell.key) },
-            make("summary", { textContent: cell.text }));
-          for (const line of cell.more) details.append(make("p", { textContent: line }));
-          return details;
-        })))),
+      ...answer.tables.map((table) => answerTable({ ...table, rows: table.rows.map((row) =>
+        row.map((cell) => (typeof cell === "string" ? cell : folded(cell, open)))) })),
     );
     answers.classList.toggle("lfp-stale", answer.stale);
     answers.ariaBusy = String(answer.stale);

@@ -23,16 +23,16 @@ from lfptools.plot.firing import draw_raster, draw_rates
 from lfptools.plot.style import SETTINGS, looks
 from lfptools.rates import RateCurve
 
-WIDTH_PX = 900
-LEFT_PX = 70
-RIGHT_PX = 100
+WIDTH_PX = 680
+LEFT_PX = 62
+RIGHT_PX = 92
 AREA_PX = 112
 MAP_PX = 164
 UNITS_PX = 210
-_TOP_PX = 20
+_TOP_PX = 34
 _BOTTOM_PX = 40
 #: Pixels of the picture for one of the page: stays sharp on fine screens and when zoomed.
-SCALE = 1.6
+SCALE = 2.0
 _DPI = 100
 
 
@@ -73,7 +73,13 @@ def averages_strip(
             draw_averages(ax, parts, (), looks=looks(conditions), spans_ms={})
             ax.tick_params(labelbottom=False)
             if index == 0:
-                ax.legend(loc="lower right", bbox_to_anchor=(1.0, 1.0), ncols=4, frameon=False)
+                ax.legend(
+                    loc="lower right",
+                    bbox_to_anchor=(1.0, 1.0),
+                    ncols=3,
+                    frameon=False,
+                    borderpad=0.1,
+                )
             low, high = ax.get_ylim()
             frames.append(Frame(area, top + 18, top + AREA_PX - 6, high, low))
         png = _png(figure)
@@ -133,6 +139,49 @@ def units_strip(
     return Strip(png, UNITS_PX, frames, alt)
 
 
+def still_picture(
+    averages: Sequence[Average],
+    latencies: Sequence[Mapping[str, Any]],
+    windows_ms: Mapping[str, Mapping[str, tuple[float, float]]],
+    span_ms: tuple[float, float],
+    conditions: Sequence[str],
+) -> bytes:
+    """Draw averages, windows and marks as one plain picture, for a saved notebook.
+
+    Parameters
+    ----------
+    averages : sequence of Average
+        The signal that stands for each area, by condition.
+    latencies : sequence of rows
+        Of latencies.csv, role area; may be empty.
+    windows_ms : mapping of area to mapping of window to (first, last)
+    span_ms : (float, float)
+        Time shown.
+    conditions : sequence of str
+        In their order.
+    """
+    areas = list(dict.fromkeys(each.area for each in averages))
+    height = AREA_PX * len(areas) + _TOP_PX + _BOTTOM_PX
+    with rc_context(SETTINGS):
+        figure = _figure(height)
+        for index, area in enumerate(areas):
+            top = _TOP_PX + AREA_PX * index
+            ax = _axes(figure, top + 24, top + AREA_PX - 6, height, span_ms)
+            parts = [each for each in averages if each.area == area]
+            rows = [dict(row) for row in latencies if row["area"] == area]
+            spans = dict(windows_ms[area])
+            look = looks(conditions)
+            draw_averages(ax, parts, rows, looks=look, spans_ms=spans, name_windows=index == 0)
+            ax.set_xlim(*span_ms)
+            if index == 0:
+                ax.legend(loc="lower right", bbox_to_anchor=(1.0, 1.1), ncols=4, frameon=False)
+            if area == areas[-1]:
+                ax.set_xlabel("time after the stimulus (ms)")
+            else:
+                ax.tick_params(labelbottom=False)
+        return _png(figure)
+
+
 def time_strip(span_ms: tuple[float, float]) -> Strip:
     """Draw the time axis alone, for sessions whose lowest strip has none."""
     height = _BOTTOM_PX + 4
@@ -185,7 +234,7 @@ def _axes(
 
 def _colour_bar(figure: Figure, ax: Axes, average: Average) -> None:
     box = ax.get_position()
-    beside = figure.add_axes((box.x1 + 0.012, box.y0, 0.012, box.height))
+    beside = figure.add_axes((box.x1 + 0.016, box.y0, 0.016, box.height))
     bar = figure.colorbar(ax.collections[0], cax=beside)
     bar.set_label(f"{average.kind.upper()} ({average.unit})")
     if average.kind == "csd":

@@ -319,6 +319,24 @@ class BenchState:
             view = replace(self.view, windows=start.view.windows)
             self._set(_Moment(view, start.opened))
 
+    def restore(self, windows: tuple[WindowChoice, ...], signal: SignalKind) -> None:
+        """Take over windows and signal kept elsewhere, as one step that undo takes back.
+
+        Raises
+        ------
+        InputError
+            If there is no window, two have one name, or an edge lies outside the trial.
+        """
+        if not windows or len({window.name for window in windows}) < len(windows):
+            raise InputError("the windows kept beside the session are none, or two have one name")
+        for window in windows:
+            self.grid.span(window.name, *window.span_ms, now_ms=window.span_ms)
+        was = dict(zip((each.name for each in self.view.windows), self._now.opened, strict=True))
+        names = [window.name for window in windows]
+        hand = self.view.hand if self.view.hand in names else names[0]
+        view = replace(self.view, windows=windows, signal=signal, hand=hand)
+        self._go(_Moment(view, tuple(was.get(name) for name in names)))
+
     # The session file.
 
     def save(self) -> Path:
