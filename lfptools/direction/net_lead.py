@@ -1,8 +1,8 @@
 """The signals of two areas in, their net lead with a quick interval out, without the jackknife.
 
-The value is that of `granger_minus_reversed`. Its interval rests on the lead scores of single
-trials, whose mean equals the value to first order: a t interval with their standard error. It
-is meant for windows that are being moved; the jackknife of `estimate_pair` is what tables hold.
+The value is that of `granger_minus_reversed`. Its interval is a t interval whose standard error
+rests on what each trial adds to the value, to first order (infinitesimal jackknife). It is
+meant for windows that are being moved; the jackknife of `estimate_pair` is what tables hold.
 """
 
 from collections.abc import Callable
@@ -13,7 +13,7 @@ from scipy.special import stdtrit
 
 from lfptools.choices import DirectionChoice, WindowChoice
 from lfptools.direction.autoregression import mean_products, with_ridge
-from lfptools.direction.controls import RIDGE, lead_scores
+from lfptools.direction.controls import RIDGE, lead_influence
 from lfptools.direction.granger import pair_contrast
 from lfptools.direction.pair import ill_conditioned, plan_pair
 from lfptools.direction.prepare import stretch, to_rate
@@ -74,6 +74,6 @@ def net_lead(
     if why:
         return NetLead(a.area, b.area, n_trials, withheld=why)
     net = float(pair_contrast(mean).net)
-    error = lead_scores(both.x, plan.orders[-1]).std(ddof=1) / np.sqrt(n_trials)
+    error = lead_influence(both.x, plan.orders[-1]).std(ddof=1) / np.sqrt(n_trials)
     half = float(stdtrit(n_trials - 1, (1 + level) / 2) * error)
     return NetLead(a.area, b.area, n_trials, net, net - half, net + half)

@@ -1,8 +1,9 @@
 """Prepared trials and the window in hand in, answers that follow the hand out.
 
 Values are those of `lfptools run`; only what surrounds them is quicker. Intervals and p-values
-rest on the first few of the resamples and random signs of a run, those of a net lead on the
-lead scores of single trials in place of the jackknife. Near p = .05 a run may judge otherwise.
+rest on the first few of the resamples and random signs of a run; the interval of a net lead
+rests on what each trial adds to it, to first order, in place of leaving each out. Near p = .05
+a run may judge otherwise.
 """
 
 from dataclasses import dataclass
