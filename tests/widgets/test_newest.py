@@ -5,6 +5,7 @@ import threading
 import time
 
 from lfpwidgets.newest import Background, Newest
+from tests.loops import run
 
 
 def test_two_hundred_values_at_once_are_one_or_two_calls():
@@ -16,7 +17,7 @@ def test_two_hundred_values_at_once_are_one_or_two_calls():
             newest.put(value)
         await asyncio.sleep(0.05)
 
-    asyncio.run(main())
+    run(main())
     assert done[-1] == 199
     assert len(done) <= 2
     assert errors == []
@@ -32,7 +33,7 @@ def test_the_last_value_is_never_lost():
             await asyncio.sleep(0.003)
         await asyncio.sleep(0.05)
 
-    asyncio.run(main())
+    run(main())
     assert done[-1] == 19
     assert done == sorted(done)
 
@@ -52,7 +53,7 @@ def test_an_error_reaches_the_caller_and_the_next_value_is_done():
         newest.put("good")
         await asyncio.sleep(0.03)
 
-    asyncio.run(main())
+    run(main())
     assert [str(error) for error in errors] == ["no such window"]
     assert done == ["good"]
 
@@ -67,7 +68,7 @@ def test_flush_does_what_waits_at_once():
         assert done == [1]
         await asyncio.sleep(0.03)
 
-    asyncio.run(main())
+    run(main())
     assert done == [1]
 
 
@@ -90,7 +91,7 @@ def test_a_newer_job_stops_the_older():
         await asyncio.sleep(0.1)
         background.close()
 
-    asyncio.run(main())
+    run(main())
     assert stopped.is_set()
     assert delivered == ["new"]
 
@@ -107,5 +108,5 @@ def test_an_error_of_the_newest_job_reaches_the_caller():
         await asyncio.sleep(0.05)
         background.close()
 
-    asyncio.run(main())
+    run(main())
     assert [str(error) for error in errors] == ["out of memory"]
