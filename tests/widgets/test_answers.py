@@ -3,7 +3,8 @@
 import os
 import subprocess
 import sys
-from dataclasses import replace
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import asdict, replace
 
 import msgspec
 import numpy as np
@@ -233,6 +234,17 @@ def test_an_answer_no_longer_wanted_is_given_up_and_loses_nothing(cut, run_of):
             fresh.full(cut.choices, "late", "single", stop=lambda left=left: next(left, True))
     found = fresh.full(cut.choices, "late", "single", stop=lambda: False)
     same_rows(found.verdicts, rows_of(run_of(*MOVES[0]), "verdicts", "late", "single"))
+
+
+def test_quick_and_full_may_be_asked_at_once(cut, run_of):
+    answers = Answers(cut)
+    with ThreadPoolExecutor(1) as worker:
+        full = worker.submit(answers.full, cut.choices, "late", "single")
+        quick = [answers.quick(moved(cut, 1, span_ms=(100.0 + step, 200.0 + step)), "late",
+                               "single", "csd") for step in range(5)]  # fmt: skip
+        same_rows(full.result().verdicts, rows_of(run_of(*MOVES[0]), "verdicts", "late", "single"))
+    alone = Answers(cut).quick(moved(cut, 1, span_ms=(104.0, 204.0)), "late", "single", "csd")
+    np.testing.assert_equal(asdict(quick[-1]), asdict(alone))
 
 
 def test_other_settings_are_answered_too(cut):
