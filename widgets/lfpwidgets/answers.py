@@ -17,7 +17,7 @@ from lfptools.choices import AnalysisChoices, WindowChoice
 from lfptools.errors import InputError
 from lfptools.evoked import Average, average, smooth
 from lfptools.layers import lfp_signals
-from lfptools.model import CutSession, Signals
+from lfptools.model import CutSession, Signals, Trials
 from lfptools.rates import RateCurve, rate_curves, spike_raster
 from lfptools.trials import MIN_TRIALS
 from lfpwidgets.full import FullAnswer, full_answer
@@ -209,7 +209,7 @@ class Answers:
             raise InputError(f"{area} has too few good contacts for current source density")
         return self._basis.csd[area]
 
-    def _trials(self, area: str):
+    def _trials(self, area: str) -> Trials:
         trials = self.cut.trials_of(area)
         if trials is None:
             raise InputError(f"no LFP was recorded in {area!r}")
