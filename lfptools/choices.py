@@ -63,6 +63,8 @@ class AreaChoice(_Record, frozen=True, kw_only=True):
     first_depth_um: float = 0.0
     bad: list[int] = []
     layers: dict[str, Span] = {}
+    #: Depth of the contact that stands for the area; None: the one with the strongest sink.
+    signal_depth_um: float | None = None
 
 
 class UnitsChoice(_Record, frozen=True, kw_only=True):

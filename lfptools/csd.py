@@ -10,11 +10,8 @@ import numpy as np
 from scipy.interpolate import CubicSpline
 
 from lfptools.errors import InputError
-from lfptools.model import Contacts, Frozen, Signals, Trials
+from lfptools.model import MIN_CONTACTS, Contacts, Frozen, Signals, Trials
 from lfptools.units import A_M3_PER_UA_MM3, UV_PER_V
-
-#: Fewer good contacts than this give no current source density.
-MIN_CONTACTS = 5
 
 
 @dataclass(frozen=True, slots=True, eq=False)

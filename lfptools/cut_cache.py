@@ -241,6 +241,7 @@ def _cut_session(stored: dict[str, np.ndarray], session: Session) -> CutSession:
             contacts=replace(area.contacts, bad=bad, why=why),
             amplifier_hz=area.recording.amplifier_hz,
             layers=area.layers,
+            signal_depth_um=area.signal_depth_um,
         )
         areas.append(trials_of_area)
     return CutSession(

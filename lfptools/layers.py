@@ -5,7 +5,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from lfptools.csd import MIN_CONTACTS
-from lfptools.model import Signals, Trials
+from lfptools.errors import InputError
+from lfptools.model import Contacts, Signals, Trials
 from lfptools.resample import Interval, exceedance_p, percentile_interval
 from lfptools.trials import window_mask
 from lfptools.waves import Search, landmarks
@@ -74,6 +75,7 @@ class Candidates:
     signals: Signals
     usable: np.ndarray  # (n_signals,) bool
     note: str = ""
+    given: int | None = None  # index of the one that the user named
 
 
 def candidates(trials: Trials, csd: Signals | None, kind: str) -> Candidates:
@@ -82,12 +84,42 @@ def candidates(trials: Trials, csd: Signals | None, kind: str) -> Candidates:
     By default the current source density at the contacts that may carry a sink, which keeps
     volume conduction and the common reference out. With too few contacts, or on request, the
     LFP of the good contacts, marked "volume conduction not excluded".
+
+    Raises
+    ------
+    InputError
+        If the trials name a depth (`signal_depth_um`) at which no contact may stand for it.
     """
     usable = usable_contacts(trials)
     if kind == "csd" and csd is not None and usable.any():
-        return Candidates(csd, usable)
+        return Candidates(csd, usable, given=_given(trials, usable))
     few = f"fewer than {MIN_CONTACTS} good contacts; " if kind == "csd" else ""
-    return Candidates(_all_contacts(trials), ~trials.contacts.bad, few + ONE_CONTACT)
+    good = ~trials.contacts.bad
+    return Candidates(_all_contacts(trials), good, few + ONE_CONTACT, _given(trials, good))
+
+
+def _given(trials: Trials, usable: np.ndarray) -> int | None:
+    """Return the contact at the depth that the user named, None where none was named."""
+    wanted_um, contacts = trials.signal_depth_um, trials.contacts
+    if wanted_um is None:
+        return None
+    at = contacts.nearest(wanted_um)
+    if at is not None and usable[at]:
+        return at
+    listed = ", ".join(f"{depth:g}" for depth in contacts.depth_um[usable])
+    raise InputError(
+        f"signal_depth_um of area {trials.area} is {wanted_um:g} um, {_why_not(contacts, at)}; "
+        f"needed is the depth of a contact that can stand for the area: {listed} um"
+    )
+
+
+def _why_not(contacts: Contacts, at: int | None) -> str:
+    if at is None:
+        return "where the array has no contact"
+    where = f"where the contact at {contacts.depth_um[at]:g} um"
+    if contacts.bad[at]:
+        return f"{where} is bad ({contacts.why[at]})"
+    return f"{where} is an outermost one, which carries no current source density"
 
 
 def grand_mean(signals: Signals, conditions: list[np.ndarray]) -> np.ndarray:
@@ -110,8 +142,9 @@ def grand_mean(signals: Signals, conditions: list[np.ndarray]) -> np.ndarray:
 def strongest(found: Candidates, mean: np.ndarray, spans_s: list[tuple[float, float]]) -> int:
     """Return the index of the signal that stands for the area.
 
-    The most negative average current, or the largest average deflection of the LFP, over all
-    windows together: taken once per area, never per window or resample.
+    The one that the user named, or else the most negative average current, or the largest
+    average deflection of the LFP, over all windows together: taken once per area, never per
+    window or resample.
 
     Parameters
     ----------
@@ -122,6 +155,8 @@ def strongest(found: Candidates, mean: np.ndarray, spans_s: list[tuple[float, fl
     spans_s : list of (float, float)
         Windows of the area.
     """
+    if found.given is not None:
+        return found.given
     inside = np.any([window_mask(found.signals.time_s, span) for span in spans_s], axis=0)
     part = mean[:, inside]
     strength = -part.min(axis=1) if found.signals.kind == "csd" else np.ptp(part, axis=1)

@@ -15,6 +15,9 @@ from lfptools.choices import AnalysisChoices
 from lfptools.errors import InputError
 from lfptools.units import SIGNAL_UNITS
 
+#: Fewer good contacts than this give no current source density.
+MIN_CONTACTS = 5
+
 
 class Frozen:
     """Turns every array field of a record into a read-only view once it is built."""
@@ -100,6 +103,15 @@ class Recording(Frozen):
         raise InputError(f"sample {sample} is not in the recording of source {self.source!r}")
 
 
+def nearest_contact(depths_um: np.ndarray, depth_um: float) -> int | None:
+    """Return which of rising depths (n,) is nearest to `depth_um`; see `Contacts.nearest`."""
+    at = int(np.argmin(np.abs(depths_um - depth_um)))
+    gaps_um = np.diff(depths_um)
+    ends_um = (gaps_um[0] / 2, gaps_um[-1] / 2) if len(gaps_um) else (0.0, 0.0)
+    inside = depths_um[0] - ends_um[0] <= depth_um <= depths_um[-1] + ends_um[1]
+    return at if inside else None
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class Contacts(Frozen):
     """The contacts of one linear array, from the surface down."""
@@ -111,6 +123,13 @@ class Contacts(Frozen):
 
     def __len__(self) -> int:
         return len(self.channel)
+
+    def nearest(self, depth_um: float) -> int | None:
+        """Return the index of the contact nearest to a depth; None beyond the array's ends.
+
+        An end reaches half the distance to the next contact further.
+        """
+        return nearest_contact(self.depth_um, depth_um)
 
     def mark(self, index: int, why: str) -> "Contacts":
         """Return a copy with contact `index` bad for the reason `why` (the first one stays)."""
@@ -160,6 +179,7 @@ class Area:
     recording: Recording | None = None
     contacts: Contacts | None = None
     layers: dict[str, tuple[float, float]] = field(default_factory=dict)
+    signal_depth_um: float | None = None  # of the contact that stands for it, where it is given
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -186,6 +206,7 @@ class Trials(Frozen):
     contacts: Contacts
     amplifier_hz: tuple[float, float] | None = None
     layers: dict[str, tuple[float, float]] = field(default_factory=dict)
+    signal_depth_um: float | None = None  # as in `Area`
 
 
 @dataclass(frozen=True, slots=True, eq=False)

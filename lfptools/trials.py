@@ -154,6 +154,7 @@ def _cut_area(area: Area, contacts: Contacts, table: TrialTable, session: Sessio
         contacts=contacts,
         amplifier_hz=recording.amplifier_hz,
         layers=area.layers,
+        signal_depth_um=area.signal_depth_um,
     )
     return without_baseline(whole, trials.baseline_s)
 

@@ -21,7 +21,7 @@ ALPHA = 0.05
 #: Fraction of the extremum that marks the onset. "auto" is half height.
 ONSET_FRACTION = {"auto": 0.5, "half": 0.5, "quarter": 0.25}
 #: Signal-to-noise ratio of the average below which a landmark is not reliable.
-_MIN_SNR = {0.5: 5.0, 0.25: 10.0}
+MIN_SNR = {0.5: 5.0, 0.25: 10.0}
 _WIDEST_INTERVAL_S = 0.030
 _MIN_DEFINED = 0.95
 #: What is emptied where the wave was not found.
@@ -252,7 +252,7 @@ def measure(
     onsets = percentile_interval(draws.onset_s, level=level, n_trials=n_trials)
     heights = percentile_interval(draws.amplitude, level=level, n_trials=n_trials)
     p = _found_p(data, signals.time_s, search, signs)
-    snr = np.abs(mean.amplitude) / _trial_noise(data, signals.time_s, search) * np.sqrt(n_trials)
+    snr = np.abs(mean.amplitude) / trial_noise(data, signals.time_s, search) * np.sqrt(n_trials)
     estimate = WaveEstimate(
         time_s=mean.time_s,
         time_lo_s=times.lo,
@@ -308,7 +308,7 @@ def _found_p(data: np.ndarray, time_s: np.ndarray, search: Search, signs: np.nda
     return exceedance_p(rises[0], rises[1:])
 
 
-def _trial_noise(data: np.ndarray, time_s: np.ndarray, search: Search) -> np.ndarray:
+def trial_noise(data: np.ndarray, time_s: np.ndarray, search: Search) -> np.ndarray:
     """SD over trials inside the window, root mean square over its samples, (n_signals,)."""
     inside = window_mask(time_s, search.span_s)
     variance = data[..., inside].var(axis=0, ddof=1, dtype=float).mean(axis=-1)
@@ -333,7 +333,7 @@ def _note(estimate: WaveEstimate, index: int, onset_defined: float, search: Sear
     if not estimate.p[index] <= ALPHA:
         return f"not found (p = {estimate.p[index]:.2g})"
     reasons = []
-    needed = _MIN_SNR[ONSET_FRACTION[search.onset]]
+    needed = MIN_SNR[ONSET_FRACTION[search.onset]]
     if estimate.snr[index] < needed:
         reasons.append(f"signal-to-noise ratio {estimate.snr[index]:.1f} below {needed:g}")
     width = estimate.time_hi_s[index] - estimate.time_lo_s[index]

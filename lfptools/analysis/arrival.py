@@ -6,7 +6,8 @@ from itertools import combinations
 import numpy as np
 
 from lfptools.analysis.basis import identity
-from lfptools.analysis.prepared import CHOSEN_HERE, Prepared
+from lfptools.analysis.elsewhere import elsewhere
+from lfptools.analysis.prepared import Prepared, chosen_note
 from lfptools.analysis.results import Row, ms, note
 from lfptools.choices import WindowChoice
 from lfptools.evoked import smooth
@@ -17,11 +18,6 @@ from lfptools.trials import FEW_TRIALS, Progress, no_progress
 from lfptools.waves import WaveEstimate, measure
 
 Key = tuple[str, str, str]  # area, condition, window
-
-
-def chosen_note(window: WindowChoice) -> str:
-    """Say so where a window was chosen by looking at the same trials."""
-    return CHOSEN_HERE if window.chosen != "before" else ""
 
 
 def measure_areas(prepared: Prepared, progress: Progress = no_progress) -> dict[Key, WaveEstimate]:
@@ -99,7 +95,8 @@ def area_rows(
 ) -> list[Row]:
     """Return the row of the signal that stands for an area; None: too few trials."""
     signal = prepared.signals[area]
-    return list(_rows(prepared, signal, "area", condition, window, estimate))
+    said = "" if estimate is None else elsewhere(prepared, area, window)
+    return list(_rows(prepared, signal, "area", condition, window, estimate, said))
 
 
 def _rows(
@@ -109,6 +106,7 @@ def _rows(
     condition: str,
     window: WindowChoice,
     estimate: WaveEstimate | None,
+    said: str = "",
 ) -> Iterator[Row]:
     n_trials = int(np.count_nonzero(prepared.rows(condition)))
     for index in range(len(signals.channel)):
@@ -140,7 +138,7 @@ def _rows(
             "amplitude_hi": float(estimate.amplitude_hi[index]),
             "found": float(estimate.found[index]),
             "p": float(estimate.p[index]),
-            "note": note(estimate.note[index], signals.note, chosen_note(window)),
+            "note": note(estimate.note[index], signals.note, said, chosen_note(window)),
         }
         yield row
 

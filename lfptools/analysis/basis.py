@@ -50,9 +50,13 @@ class Basis:
 
     def signal(self, area: str, kind: str, spans_s: list[tuple[float, float]]) -> Signals:
         """Return the one signal that stands for an area with windows at `spans_s`."""
-        found, mean = self.courses.get(("candidates", area, kind), lambda: self._known(area, kind))
+        found, mean = self.candidates(area, kind)
         index = strongest(found, mean, spans_s)
         return self.courses.get(("signal", area, kind, index), lambda: chosen(found, index))
+
+    def candidates(self, area: str, kind: str) -> tuple[Candidates, np.ndarray]:
+        """Return the signals of which one stands for an area, and their grand mean."""
+        return self.courses.get(("candidates", area, kind), lambda: self._known(area, kind))
 
     def _known(self, area: str, kind: str) -> tuple[Candidates, np.ndarray]:
         trials = self.cut.trials_of(area)

@@ -2,8 +2,7 @@
 
 import msgspec
 
-from lfptools.analysis.arrival import chosen_note
-from lfptools.analysis.prepared import Prepared
+from lfptools.analysis.prepared import Prepared, chosen_note
 from lfptools.analysis.results import Row, add_q, note
 from lfptools.choices import WindowChoice
 from lfptools.rates import finish_calls, in_order, window_rows

@@ -4,9 +4,8 @@ from itertools import combinations
 
 import numpy as np
 
-from lfptools.analysis.arrival import chosen_note
 from lfptools.analysis.basis import identity
-from lfptools.analysis.prepared import Prepared
+from lfptools.analysis.prepared import Prepared, chosen_note
 from lfptools.analysis.results import Row, ms, note
 from lfptools.choices import WindowChoice
 from lfptools.direction.pair import PairEstimate, estimate_pair

@@ -20,6 +20,11 @@ from lfptools.waves import Search, landmarks
 CHOSEN_HERE = "window chosen on these trials"
 
 
+def chosen_note(window: WindowChoice) -> str:
+    """Say so where a window was chosen by looking at the same trials."""
+    return CHOSEN_HERE if window.chosen != "before" else ""
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class Prepared:
     """What every analysis of a session starts from, its windows known."""

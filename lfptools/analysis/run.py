@@ -114,8 +114,6 @@ def _not_recorded(prepared: Prepared) -> dict[str, str]:
         said |= dict.fromkeys(("latencies", "sinks"), _NO_LFP)
     if len(prepared.cut.areas) < 2:
         said |= dict.fromkeys(("lags", "direction", "verdicts"), _ONE_AREA)
-    if prepared.cut.areas and not prepared.csd:
-        said["sinks"] = "fewer than 5 good contacts in every area"
     if prepared.cut.spikes is None:
         said |= dict.fromkeys(("firing", "coupling"), _NO_SPIKES)
     elif not prepared.cut.areas:

@@ -1,8 +1,11 @@
-"""The `channels` key of an area comes in; the list of channel indices goes out."""
+"""The keys of an area that describe its array come in; channel indices and depths go out."""
 
 import re
 from collections.abc import Sequence
 
+import numpy as np
+
+from lfptools.choices import AreaChoice
 from lfptools.errors import InputError
 
 _PART = re.compile(r"(\d{1,6})(?:-(\d{1,6}))?")
@@ -36,6 +39,13 @@ def parse_channels(text: str | Sequence[int]) -> list[int]:
     if twice:
         raise InputError(f"{text!r} names channel {twice[0]} twice; needed is each channel once")
     return found
+
+
+def contact_depths_um(area: AreaChoice, n_channels: int) -> np.ndarray:
+    """Return the depths of an area's contacts in um, shape (n_channels,), as its keys give them."""
+    if area.depths_um is not None:
+        return np.array(area.depths_um, dtype=float)
+    return area.first_depth_um + (area.pitch_um or 0.0) * np.arange(n_channels)
 
 
 def _expand(text: str) -> list[int]:

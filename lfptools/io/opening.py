@@ -7,7 +7,7 @@ import numpy as np
 
 from lfptools.choices import AreaChoice, SourceChoice
 from lfptools.errors import ReaderError, SessionFileError
-from lfptools.io.channels import parse_channels
+from lfptools.io.channels import contact_depths_um, parse_channels
 from lfptools.io.formats import FORMATS
 from lfptools.io.session_file import SessionFile, read_session_file
 from lfptools.io.stored_units import StoredUnit, pick_units
@@ -87,7 +87,7 @@ def _area(found: SessionFile, index: int, area: AreaChoice, recording: Recording
     where = f"{found.path}: area[{index}].channels ({area.name})"
     contacts = _contacts(area, recording, where)
     _need_order(found, area, recording, contacts, where)
-    return Area(area.name, recording, contacts, dict(area.layers))
+    return Area(area.name, recording, contacts, dict(area.layers), area.signal_depth_um)
 
 
 def _contacts(area: AreaChoice, recording: Recording, where: str) -> Contacts:
@@ -98,10 +98,7 @@ def _contacts(area: AreaChoice, recording: Recording, where: str) -> Contacts:
             f"{where} names channel {outside[0]}; source {recording.source!r} holds "
             f"{recording.n_channels} channels, 0 to {recording.n_channels - 1}"
         )
-    if area.depths_um is not None:
-        depth_um = np.array(area.depths_um)
-    else:
-        depth_um = area.first_depth_um + (area.pitch_um or 0.0) * np.arange(len(channels))
+    depth_um = contact_depths_um(area, len(channels))
     bad = np.isin(channels, area.bad)
     return Contacts(channels, depth_um, bad, tuple(_LISTED_BAD if each else "" for each in bad))
 

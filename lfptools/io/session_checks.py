@@ -4,21 +4,14 @@ Types and single values are checked when the file is decoded; here stands what o
 together can get wrong. Every complaint names the key, what was found and what is needed.
 """
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator
 
 import numpy as np
 
-from lfptools.choices import (
-    AreaChoice,
-    SessionChoices,
-    SourceChoice,
-    Span,
-    UnitsChoice,
-    WindowChoice,
-)
-from lfptools.errors import InputError
-from lfptools.io.channels import parse_channels
-from lfptools.io.formats import FORMATS, SAMPLE_KEYS, holding
+from lfptools.choices import SessionChoices, SourceChoice, Span, UnitsChoice, WindowChoice
+from lfptools.io.area_checks import area_complaints, shared_channel_complaints
+from lfptools.io.complaint_words import listed, rising, say, source_of
+from lfptools.io.formats import FORMATS, SAMPLE_KEYS
 
 _FIELD_WORDS = ("neighbour", "same")
 
@@ -38,22 +31,14 @@ def complaints(choices: SessionChoices) -> Iterator[str]:
     """
     yield from _names(choices)
     yield from _sources(choices)
-    yield from _areas(choices)
-    yield from _shared_channels(choices)
+    yield from area_complaints(choices)
+    yield from shared_channel_complaints(choices)
     yield from _units(choices)
     yield from _clocks(choices)
     yield from _trials(choices)
     yield from _windows(choices)
     yield from _bands(choices)
     yield from _field(choices)
-
-
-def _say(key: str, found: object, needed: str) -> str:
-    return f"{key} is {found!r}; needed is {needed}"
-
-
-def _listed(names: Sequence[str]) -> str:
-    return ", ".join(names) if names else "none is there"
 
 
 def _names(choices: SessionChoices) -> Iterator[str]:
@@ -66,10 +51,10 @@ def _names(choices: SessionChoices) -> Iterator[str]:
         for index, name in enumerate(names):
             if name in names[:index]:
                 key = f"{table}[{index}].name ({name})"
-                yield _say(key, name, f"a name that {table}[{names.index(name)}] does not have yet")
+                yield say(key, name, f"a name that {table}[{names.index(name)}] does not have yet")
     for index, area in enumerate(choices.area):
         if area.name in _FIELD_WORDS:
-            yield _say(
+            yield say(
                 f"area[{index}].name",
                 area.name,
                 f"another name: {' and '.join(_FIELD_WORDS)} are words of coupling.field",
@@ -80,7 +65,7 @@ def _sources(choices: SessionChoices) -> Iterator[str]:
     for index, source in enumerate(choices.source):
         where = f"source[{index}]"
         if source.format not in FORMATS:
-            yield _say(
+            yield say(
                 f"{where}.format ({source.name})", source.format, f"one of {', '.join(FORMATS)}"
             )
             continue
@@ -99,15 +84,15 @@ def _sample_keys(where: str, source: SourceChoice) -> Iterator[str]:
                 f"carry it: needed are {', '.join(needs)}"
             )
         if key not in needs and given is not None:
-            yield _say(
+            yield say(
                 f"{where}.{key} ({source.name})",
                 given,
                 f"nothing: files of format {source.format!r} carry it",
             )
     if source.gain_uv == 0:
-        yield _say(f"{where}.gain_uv ({source.name})", source.gain_uv, "a number other than 0")
+        yield say(f"{where}.gain_uv ({source.name})", source.gain_uv, "a number other than 0")
     if source.dtype is not None and not _is_number_type(source.dtype):
-        yield _say(
+        yield say(
             f"{where}.dtype ({source.name})",
             source.dtype,
             "a type of number such as 'int16', '>i2' or 'float32'",
@@ -121,123 +106,22 @@ def _is_number_type(name: str) -> bool:
         return False
 
 
-def _areas(choices: SessionChoices) -> Iterator[str]:
-    for index, area in enumerate(choices.area):
-        where = f"area[{index}]"
-        if area.source is None:
-            yield from _without_source(where, area)
-        else:
-            yield from _source_of(f"{where}.source ({area.name})", area.source, "signals", choices)
-            yield from _contacts(where, area)
-        for layer, span in area.layers.items():
-            yield from _rising(f"{where}.layers.{layer} ({area.name})", span, "um")
-
-
-def _without_source(where: str, area: AreaChoice) -> Iterator[str]:
-    given = ("channels", "pitch_um", "depths_um", "contacts_file", "bad")
-    for key in given:
-        if getattr(area, key):
-            yield (
-                f"{where}.source ({area.name}) is missing; {key} is given, so needed is the "
-                "name of a [[source]] with signals"
-            )
-
-
-def _source_of(key: str, name: str, of: str, choices: SessionChoices) -> Iterator[str]:
-    found = next((each for each in choices.source if each.name == name), None)
-    if found is None:
-        names = [each.name for each in choices.source]
-        yield _say(key, name, f"the name of a [[source]]: {_listed(names)}")
-    elif found.format in FORMATS and of not in FORMATS[found.format].carries:
-        yield (
-            f"{key} is {name!r}, which has format {found.format!r} and holds no {of}; needed is "
-            f"a source of format {' or '.join(holding(of))}"
-        )
-
-
-def _contacts(where: str, area: AreaChoice) -> Iterator[str]:
-    if area.channels is None:
-        yield f"{where}.channels ({area.name}) is missing; needed are channels such as '0-15'"
-        return
-    try:
-        channels = parse_channels(area.channels)
-    except InputError as error:
-        yield f"{where}.channels ({area.name}): {error}"
-        return
-    yield from _depths(where, area, len(channels))
-    for channel in area.bad:
-        if channel not in channels:
-            yield _say(
-                f"{where}.bad ({area.name})",
-                area.bad,
-                f"channels of this area (channel {channel} is not in {area.channels!r})",
-            )
-
-
-def _shared_channels(choices: SessionChoices) -> Iterator[str]:
-    owner: dict[tuple[str, int], str] = {}
-    for index, area in enumerate(choices.area):
-        for channel in parse_channels(area.channels) if area.source and area.channels else ():
-            first = owner.setdefault((area.source or "", channel), area.name)
-            if first != area.name:
-                yield (
-                    f"area[{index}].channels ({area.name}) names channel {channel} of source "
-                    f"{area.source!r}, which {first} holds; needed is each channel in one area"
-                )
-                return
-
-
-def _depths(where: str, area: AreaChoice, n_channels: int) -> Iterator[str]:
-    ways = ("pitch_um", "depths_um", "contacts_file")
-    given = [key for key in ways if getattr(area, key) is not None]
-    if area.contacts_file is not None:
-        yield (
-            f"{where}.contacts_file ({area.name}) is not available yet; needed is pitch_um or "
-            "depths_um"
-        )
-    elif len(given) != 1:
-        found = "are given" if given else "are missing"
-        yield (
-            f"{where}.pitch_um and {where}.depths_um ({area.name}) {found}; needed is exactly "
-            "one of them"
-        )
-    elif area.depths_um is not None:
-        key = f"{where}.depths_um ({area.name})"
-        if len(area.depths_um) != n_channels:
-            yield (
-                f"{key} lists {len(area.depths_um)} depths; needed are {n_channels}, one for "
-                "each of the area's channels"
-            )
-        elif not np.all(np.diff(area.depths_um) > 0):
-            yield _say(
-                key,
-                area.depths_um,
-                "strictly rising depths: channels are listed from the surface down",
-            )
-        if area.first_depth_um != 0:
-            yield _say(
-                f"{where}.first_depth_um ({area.name})",
-                area.first_depth_um,
-                "nothing: depths_um already counts from the surface",
-            )
-
-
 def _units(choices: SessionChoices) -> Iterator[str]:
     areas = [area.name for area in choices.area]
     seen: list[UnitsChoice] = []
     for index, units in enumerate(choices.units):
         where = f"units[{index}]"
         if units.area not in areas:
-            yield _say(f"{where}.area", units.area, f"the name of an [[area]]: {_listed(areas)}")
-        yield from _source_of(f"{where}.source ({units.area})", units.source, "units", choices)
+            yield say(f"{where}.area", units.area, f"the name of an [[area]]: {listed(areas)}")
+        yield from source_of(f"{where}.source ({units.area})", units.source, "units", choices)
         if any((each.area, each.source) == (units.area, units.source) for each in seen):
-            yield _say(
+            yield say(
                 f"{where}.source ({units.area})",
                 units.source,
                 "another source: these units are already listed for this area",
             )
         if units.keep is not None and not units.keep:
-            yield _say(
+            yield say(
                 f"{where}.keep ({units.area})", units.keep, "at least one label, or no such key"
             )
         seen.append(units)
@@ -280,7 +164,7 @@ def _event_clock(choices: SessionChoices, first: str) -> Iterator[str]:
                 f"{', '.join(clocks)}"
             )
     elif clock not in clocks:
-        yield _say("events.clock", clock, f"a clock of a [[source]]: {_listed(clocks)}")
+        yield say("events.clock", clock, f"a clock of a [[source]]: {listed(clocks)}")
     elif first and clock != first:
         yield (
             f"events.clock is {clock!r} and the recordings are on clock {first!r}, and nothing "
@@ -290,12 +174,12 @@ def _event_clock(choices: SessionChoices, first: str) -> Iterator[str]:
 
 def _trials(choices: SessionChoices) -> Iterator[str]:
     trials = choices.trials
-    yield from _rising("trials.window_ms", trials.window_ms, "ms")
-    yield from _rising("trials.baseline_ms", trials.baseline_ms, "ms")
+    yield from rising("trials.window_ms", trials.window_ms, "ms")
+    yield from rising("trials.baseline_ms", trials.baseline_ms, "ms")
     yield from _within("trials.baseline_ms", trials.baseline_ms, trials.window_ms)
     for row in choices.events.drop:
         if row < 0:
-            yield _say("events.drop", choices.events.drop, "rows of the table, counted from 0")
+            yield say("events.drop", choices.events.drop, "rows of the table, counted from 0")
 
 
 def _windows(choices: SessionChoices) -> Iterator[str]:
@@ -303,21 +187,21 @@ def _windows(choices: SessionChoices) -> Iterator[str]:
     outer = choices.trials.window_ms
     for index, window in enumerate(choices.window):
         for key, span in _spans(f"window[{index}]", window):
-            yield from _rising(f"{key} ({window.name})", span, "ms")
+            yield from rising(f"{key} ({window.name})", span, "ms")
             yield from _within(f"{key} ({window.name})", span, outer)
         for name in window.areas or ():
             if name not in areas:
-                yield _say(
+                yield say(
                     f"window[{index}].areas ({window.name})",
                     name,
-                    f"the name of an [[area]]: {_listed(areas)}",
+                    f"the name of an [[area]]: {listed(areas)}",
                 )
         for name in window.for_:
             allowed = [each for each in areas if window.holds(each)]
             if name not in allowed:
                 yield (
                     f"window[{index}].for.{name} ({window.name}) names no area of this window; "
-                    f"needed is one of: {_listed(allowed)}"
+                    f"needed is one of: {listed(allowed)}"
                 )
 
 
@@ -345,17 +229,12 @@ def _bands(choices: SessionChoices) -> Iterator[str]:
 def _field(choices: SessionChoices) -> Iterator[str]:
     allowed = [*_FIELD_WORDS, *(area.name for area in choices.area)]
     if choices.coupling.field not in allowed:
-        yield _say("coupling.field", choices.coupling.field, f"one of {', '.join(allowed)}")
-
-
-def _rising(key: str, span: Span, unit: str) -> Iterator[str]:
-    if not span[0] < span[1]:
-        yield _say(key, list(span), f"[first, last] in {unit} with first below last")
+        yield say("coupling.field", choices.coupling.field, f"one of {', '.join(allowed)}")
 
 
 def _within(key: str, span: Span, outer: Span) -> Iterator[str]:
     if span[0] < outer[0] or span[1] > outer[1]:
-        yield _say(key, list(span), f"a span inside trials.window_ms, {list(outer)}")
+        yield say(key, list(span), f"a span inside trials.window_ms, {list(outer)}")
 
 
 def _band(key: str, band: Span, *, low: float | None) -> Iterator[str]:
@@ -363,4 +242,4 @@ def _band(key: str, band: Span, *, low: float | None) -> Iterator[str]:
     starts = band[0] > 0 if low is None else band[0] >= low
     if not (starts and band[0] < band[1]):
         floor = "above 0" if low is None else f"from {low:g}"
-        yield _say(key, list(band), f"[low, high] in Hz, {floor}, with low below high")
+        yield say(key, list(band), f"[low, high] in Hz, {floor}, with low below high")

@@ -17,6 +17,8 @@ from lfptools.errors import ReaderError
 #: Version of the layout of the manifest.
 LAYOUT = 1
 _PACKAGES = ("lfptools", "numpy", "scipy", "mne", "neo", "h5py", "pandas", "matplotlib")
+#: How a signal was chosen whose depth the user gave.
+GIVEN = "as given by signal_depth_um"
 #: Settings that hold paths: only what lies below the session's root may stand in them.
 _PATH_KEYS = ("root", "path", "file", "contacts_file")
 
@@ -88,9 +90,17 @@ def signals(results: Results) -> list[dict[str, Any]]:
                 "channel": int(each.channel[0]),
                 "depth_um": float(each.depth_um[0]),
                 "unit": each.unit,
+                "chosen": _how_chosen(results, each.area),
             },
         )
     return list(found.values())
+
+
+def _how_chosen(results: Results, area: str) -> str:
+    trials = results.cut.trials_of(area)
+    if trials is not None and trials.signal_depth_um is not None:
+        return f"{GIVEN} ({trials.signal_depth_um:g} um)"
+    return "from the average over all conditions and windows"
 
 
 def bad_contacts(results: Results) -> list[dict[str, Any]]:

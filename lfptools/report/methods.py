@@ -6,7 +6,7 @@ import numpy as np
 
 from lfptools.analysis.results import Results
 from lfptools.plot.marks import chosen, number
-from lfptools.report.manifest import signals, trial_counts, versions
+from lfptools.report.manifest import GIVEN, signals, trial_counts, versions
 from lfptools.waves import ONSET_FRACTION
 
 #: The published methods a run may use, by key; titles and pages from memory.
@@ -93,15 +93,17 @@ def _signals(results: Results) -> Part | None:
     if not found:
         return None
     listed = ", ".join(
-        f"{each['area']}: {each['signal'].upper()} at {each['depth_um']:g} um" for each in found
+        f"{each['area']}: {each['signal'].upper()} at {each['depth_um']:g} um"
+        + (", as given" if each["chosen"].startswith(GIVEN) else "")
+        for each in found
     )
+    given = [each["chosen"].startswith(GIVEN) for each in found]
+    chosen_from = "chosen once from the average over all conditions and windows"
+    how_chosen = "" if all(given) else f", {chosen_from}" + (" where not given" * any(given))
     auto = results.choices.latency.smooth_ms == "auto"
     how = "one a window for all areas and conditions, by least estimated risk" if auto else "as set"
     widths = ", ".join(f"{name} {1000 * sd_s:g} ms" for name, sd_s in results.smooth_s.items())
-    text = (
-        f"One signal stood for each area ({listed}), chosen once from the average over all "
-        "conditions and windows."
-    )
+    text = f"One signal stood for each area in all windows ({listed}){how_chosen}."
     if widths:
         text += (
             " It was smoothed without delay by a Gaussian whose leading bias was taken off "

@@ -18,7 +18,7 @@ from lfptools.plot.marks import Row, chosen
 from lfptools.plot.sheets import SHEETS
 from lfptools.plot.style import DPI
 from lfptools.report.page_tables import PageTable, page_table
-from lfptools.report.sentences import in_short
+from lfptools.report.sentences import SMALLEST, in_short
 from lfptools.report.texts import CAUTIONS, CHOSEN_HERE, SECTIONS, SectionText
 
 
@@ -39,13 +39,15 @@ def page(results: Results, account: Mapping[str, Any]) -> str:
         trim_blocks=True,
         lstrip_blocks=True,
     )
+    said = in_short(results)
     return environment.get_template("page.html.j2").render(
         results=results,
         account=account,
         areas=_areas(results, account),
         conditions=_conditions(account),
         chosen_here=_chosen_here(results),
-        said=in_short(results),
+        said=said,
+        smallest_said=any(SMALLEST in sentence for each in said for sentence in each.sentences),
         sections=[each for text in SECTIONS if (each := _section(results, text))],
         settings=_flat(account["settings"]),
         cautions=CAUTIONS,

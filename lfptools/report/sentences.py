@@ -4,9 +4,15 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from lfptools.analysis.depth import NO_DENSITY
+from lfptools.analysis.elsewhere import ELSEWHERE
 from lfptools.analysis.results import Results
+from lfptools.layers import ONE_CONTACT
 from lfptools.plot.marks import Row, chosen, number
 from lfptools.plot.words import cell, probability, verdict_words
+
+#: Names the net value that these trials would have shown; the page explains it where it stands.
+SMALLEST = "smallest detectable"
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,11 +66,19 @@ def _order(results: Results, rows: list[Row]) -> str:
                 " before " if _apart(results, found[index - 1], row) else " and, not told apart, "
             )
         text += f"{row['area']} {cell(row, 'time_ms', 'time_lo_ms', 'time_hi_ms', 'ms')}"
-        text += " (not reliable)" if str(row["note"]).startswith("not reliable") else ""
+        remarks = _remarks(row)
+        text += f" ({'; '.join(remarks)})" if remarks else ""
     missing = [f"{row['area']}: {row['note']}" for row in rows if row not in found]
     parts = [text] if text else []
     parts += [f"{found[0]['n_trials']} trials"] if found else []
     return "; ".join([*parts, *missing])
+
+
+def _remarks(row: Row) -> list[str]:
+    """Return what must be known of a wave that was found: its doubts, in the words of its note."""
+    parts = str(row["note"]).split("; ")
+    doubt = ["not reliable"] if parts[0].startswith("not reliable") else []
+    return doubt + [each for each in parts if each == ONE_CONTACT or each.startswith(ELSEWHERE)]
 
 
 def _apart(results: Results, first: Row, second: Row) -> bool:
@@ -80,18 +94,28 @@ def _apart(results: Results, first: Row, second: Row) -> bool:
 
 def _sinks(results: Results) -> tuple[str, ...]:
     sentences = []
+    without = [
+        area
+        for area in results.cut.area_names
+        if any(NO_DENSITY in str(row["note"]) for row in chosen(results.rows["sinks"], area=area))
+    ]
     for window in results.choices.window:
         for area in results.cut.area_names:
             rows = chosen(results.rows["sinks"], kind="sink", window=window.name, area=area)
-            if rows:
-                listed = "; ".join(_sink(row) for row in rows)
-                sentences.append(f"{area}, {window.name}: strongest sink {listed}.")
-    return tuple(sentences)
+            if rows and area not in without:
+                sentences.append(f"{area}, {window.name}: {_sinks_of(rows)}.")
+    return (*sentences, *(f"{area}: {NO_DENSITY}." for area in without))
+
+
+def _sinks_of(rows: list[Row]) -> str:
+    found = [row for row in rows if np.isfinite(number(row, "depth_um"))]
+    parts = ["strongest sink " + "; ".join(_sink(row) for row in found)] if found else []
+    missing = [row for row in rows if row not in found]
+    parts += [f"no sink shown ({row['condition']}: {row['note']})" for row in missing]
+    return "; ".join(parts)
 
 
 def _sink(row: Row) -> str:
-    if not np.isfinite(number(row, "depth_um")):
-        return f"{row['condition']}: {row['note']}"
     layer = f" in {row['layer']}" if row["layer"] else ""
     depth = cell(row, "depth_um", "depth_lo_um", "depth_hi_um", "um")
     peak = cell(row, "peak_ms", "peak_lo_ms", "peak_hi_ms", "ms")
@@ -146,7 +170,7 @@ def _lead(row: Row) -> str:
     net = cell(row, "net", "lo", "hi")
     text = f"{head}: net {net} (positive: {row['area_a']} leads), "
     text += f"q = {probability(number(row, 'q'))}, {trials}"
-    if row["verdict"] == "leads":
-        return text + "."
     least = number(row, "smallest_detectable")
-    return f"{text}; smallest detectable net {least:.2g}."
+    if row["verdict"] != "leads" and np.isfinite(least):
+        text += f"; {SMALLEST} net {least:.2g}"
+    return text + ("" if ONE_CONTACT not in str(row.get("caveat")) else f"; {ONE_CONTACT}") + "."

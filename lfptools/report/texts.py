@@ -51,7 +51,10 @@ SECTIONS = (
         "of their own.",
         limits="The onset is that of the stated fraction and not the physical beginning of the "
         "current; waves of unequal shape differ in it without differing in arrival. A wave that "
-        "is not found may still be there, too small for these trials.",
+        "is not found may still be there: too small for these trials, or at another depth. One "
+        "contact stands for an area in all windows; where the current of a window enters "
+        "elsewhere, the note says at which depth, and the rows of single contacts (under Current "
+        "by depth) show the wave there.",
     ),
     SectionText(
         title="Lags between areas",

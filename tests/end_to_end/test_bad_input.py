@@ -69,6 +69,10 @@ CASES = {
         lambda f: events(f, lambda header, rows: [header, *rows[:9]]),
         ["8 accepted trials", "single: "],
     ),
+    "depth of a contact that proves bad": (
+        lambda f: spoil(f, ("pitch_um = 100", "pitch_um = 100\nsignal_depth_um = 1000")),
+        ["signal_depth_um of area S1", "1000 um", "dead", "900, 1100"],
+    ),
     "clocks that nothing joins": (
         lambda f: spoil(f, ('clock = "rig" # sources', 'clock = "other" # sources')),
         ["session.toml", "other", "rig"],

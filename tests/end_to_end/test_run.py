@@ -83,6 +83,27 @@ def test_a_condition_with_few_trials_is_said_and_the_rest_runs(own_session, tmp_
     assert any(row["time_ms"] for row in single)
 
 
+def test_the_depth_that_stands_for_an_area_is_carried_through(own_session, tmp_path):
+    path = own_session / "session.toml"
+    path.write_text(
+        path.read_text().replace("pitch_um = 100", "pitch_um = 100\nsignal_depth_um = 290", 1)
+    )
+    out = tmp_path / "out"
+    assert main(["run", str(path), "--out", str(out), "--quiet"]) == 0
+    areas = [row for row in rows(out, "latencies") if row["role"] == "area"]
+    assert {row["depth_um"] for row in areas if row["area"] == "S1"} == {"300"}
+    assert {row["signal"] for row in areas} == {"csd"}
+    account = json.loads((out / "manifest.json").read_text())
+    assert account["signals"][0]["depth_um"] == 300
+    assert account["signals"][0]["chosen"] == "as given by signal_depth_um (290 um)"
+    assert account["settings"]["area"][0]["signal_depth_um"] == 290
+    # The scenario's early sink of S1 is planted 300 um deeper.
+    early = [row for row in areas if (row["area"], row["window"]) == ("S1", "early")]
+    assert all("this window's strongest sink is at 600 um" in row["note"] for row in early)
+    report = (out / "report.html").read_text()
+    assert "strongest sink is at 600 um" in report.partition("In short")[2].partition("<h2>")[0]
+
+
 def test_a_session_without_spikes_says_not_recorded(own_session, tmp_path):
     path = own_session / "session.toml"
     text = path.read_text()

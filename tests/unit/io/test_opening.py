@@ -37,6 +37,11 @@ def test_areas_contacts_and_names(folder):
     assert session.choices.window[0].name == "early"
 
 
+def test_the_depth_that_stands_for_an_area(folder):
+    path = changed(folder, ("pitch_um = 100", "pitch_um = 100\nsignal_depth_um = 310"))
+    assert [area.signal_depth_um for area in open_session(path).areas] == [310.0, None]
+
+
 def test_a_session_file_already_read_opens_the_same(folder):
     session = open_session(read_session_file(folder / "session.toml"))
     assert [area.name for area in session.areas] == ["S1", "M1"]

@@ -26,6 +26,34 @@ def test_defaults_follow_the_only_clock(bare, session_text):
     assert read_session_file(bare / "session.toml").choices.events.clock is None
 
 
+def test_layers_that_touch_do_not_overlap(bare, session_text):
+    text = session_text.replace("L4 = [100, 250]", "L5 = [250, 300], L4 = [100, 250]")
+    (bare / "session.toml").write_text(text)
+    (area, _) = read_session_file(bare / "session.toml").choices.area
+    assert area.layers == {"L5": (250.0, 300.0), "L4": (100.0, 250.0)}
+
+
+@pytest.mark.parametrize(
+    ("signal", "depth_um", "refused"),
+    [("csd", 0, True), ("csd", 100, False), ("csd", 430, True), ("lfp", 0, False)],
+)
+def test_an_outermost_contact_carries_no_current(bare, session_text, signal, depth_um, refused):
+    # 5 good contacts, so that the area has current source density, at 0 to 400 um.
+    text = session_text.replace('channels = "0-3"\n', 'channels = "0-4"\n', 1)
+    text = text.replace(
+        "pitch_um = 100\nbad = [2]", f"pitch_um = 100\nsignal_depth_um = {depth_um}"
+    )
+    (bare / "session.toml").write_text(f'{text}\n[direction]\nsignal = "{signal}"\n')
+    if not refused:
+        choices = read_session_file(bare / "session.toml").choices
+        assert choices.area[0].signal_depth_um == depth_um
+        return
+    with pytest.raises(
+        SessionFileError, match=r"area\[0\]\.signal_depth_um \(S1\) .* 100, 200, 300"
+    ):
+        read_session_file(bare / "session.toml")
+
+
 def refuse(bare, session_text, old, new):
     """Read the session file with `old` replaced and return the message of its refusal."""
     assert session_text.count(old) >= 1, old
@@ -141,6 +169,16 @@ CONTRADICTIONS = [
     ("bad = [2]", "bad = [2, 9]", "area[0].bad (S1)", "[2, 9]", "channel 9 is not in '0-3'"),
     ("L4 = [100, 250]", "L4 = [250, 100]", "area[0].layers.L4 (S1)", "[250.0, 100.0]",
      "first below last"),
+    ("L4 = [100, 250]", "L4 = [100, 250], L5 = [240, 300], L23 = [0, 90]",
+     "area[0].layers.L5 (S1)", "[240.0, 300.0]", "does not overlap L4, [100.0, 250.0]"),
+    ("pitch_um = 100", "pitch_um = 100\nsignal_depth_um = 200", "area[0].signal_depth_um (S1)",
+     "200.0", "0, 100, 300"),  # contact 2, at 200 um, is listed as bad
+    ("pitch_um = 100", "pitch_um = 100\nsignal_depth_um = 351", "area[0].signal_depth_um (S1)",
+     "351.0", "0, 100, 300"),
+    ("depths_um = [0", "signal_depth_um = -51\ndepths_um = [0", "area[1].signal_depth_um (M1)",
+     "-51.0", "0, 100, 250, 300"),
+    ('source = "s1_lfp"\nchannels = "0-3"\npitch_um = 100\nbad = [2]', "signal_depth_um = 0",
+     "area[0].source (S1)", "missing", "signal_depth_um is given"),
     ('source = "m1"\nchannels', 'source = "s1_lfp"\nchannels', "area[1].channels (M1)",
      "channel 3", "each channel in one area"),
     ('area = "S1"', 'area = "S3"', "units[0].area", "'S3'", "S1, M1"),

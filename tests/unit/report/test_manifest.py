@@ -25,6 +25,8 @@ def test_it_holds_settings_windows_signals_and_counts_as_used():
     assert account["settings"] == as_plain(results().choices)
     assert account["windows"][0] == {"name": "early", "span_ms": [5.0, 60.0], "chosen": "before"}
     assert [each["area"] for each in account["signals"]] == ["S1", "M1"]
+    chosen = [each["chosen"] for each in account["signals"]]
+    assert chosen == ["from the average over all conditions and windows"] * 2
     assert account["bad_contacts"] == [
         {"area": "S1", "channel": 13, "depth_um": 300.0, "why": "dead: steps of 0.1 uV"}
     ]

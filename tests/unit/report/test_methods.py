@@ -45,6 +45,18 @@ def test_only_methods_that_were_used_are_cited():
     assert one_area == {"bootstrap", "csd", "ends"}
 
 
+def test_a_signal_whose_depth_was_given_is_said_to_be():
+    assert "chosen once from the average over all conditions and windows." in methods(results())
+    s1, m1 = results().cut.areas
+    given = replace(s1, signal_depth_um=200.0)
+    text = methods(replace(results(), cut=replace(results().cut, areas=(given, m1))))
+    assert "(S1: CSD at 200 um, as given, M1: CSD at 200 um)" in text
+    assert "from the average over all conditions and windows where not given." in text
+    both = (given, replace(m1, signal_depth_um=200.0))
+    text = methods(replace(results(), cut=replace(results().cut, areas=both)))
+    assert "average over all conditions and windows" not in text
+
+
 def test_other_choices_change_the_text():
     choices = msgspec.structs.replace(
         results().choices,

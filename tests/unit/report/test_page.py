@@ -70,6 +70,16 @@ def test_every_section_has_its_figures_with_alternative_text_and_its_tables():
     assert read.tags.count("table") == 11  # with areas, trials and settings
 
 
+def test_the_smallest_detectable_net_is_explained_only_where_one_is_said():
+    explained = "Smallest detectable net: it would have been seen in 80 % of cases."
+    assert explained in _read(_page()).text
+    assert explained not in _read(_page(with_lfp=False)).text
+    found = results()
+    leads = tuple(row | {"verdict": "leads", "leader": "S1"} for row in found.rows["verdicts"])
+    led = replace(found, rows=found.rows | {"verdicts": leads})
+    assert explained not in _read(page(led, manifest(led))).text
+
+
 def test_nothing_is_loaded_from_outside():
     read = _read(_page())
     loads = ("src", "href", "srcset", "data", "action", "poster", "background")

@@ -8,6 +8,8 @@ from lfptools.report.sentences import in_short
 from tests.report_sessions import results
 
 NAN = float("nan")
+AWAY = "this window's strongest sink is at 400 um"
+HERE = "window chosen on these trials"
 
 
 def _latency(area: str, time_ms: float, note: str = "") -> dict:
@@ -53,13 +55,29 @@ def test_areas_whose_lag_is_not_clear_are_not_told_apart(lag):
 
 
 def test_waves_not_found_or_not_reliable_are_said_to_be():
-    lost = _latency("M1", NAN, "not found (p = 0.4)")
+    lost = _latency("M1", NAN, f"not found (p = 0.4); {AWAY}")
     vague = _latency("S1", 13.0, "not reliable: found in 80% of resamples")
     said = _said(latencies=(vague, lost))
     assert said == [
         "early, single: S1 13.0 ms [12.6, 13.4] (not reliable); 112 trials; "
-        "M1: not found (p = 0.4)."
+        f"M1: not found (p = 0.4); {AWAY}."
     ]
+
+
+def test_what_bears_on_a_wave_that_was_found_is_said_beside_it():
+    few = _latency("M1", 24.0, "fewer than 5 good contacts; volume conduction not excluded")
+    away = _latency("S1", 13.0, f"not reliable: interval 9 ms wider than 5 ms; {AWAY}; {HERE}")
+    assert _said(latencies=(away, few)) == [
+        f"early, single: S1 13.0 ms [12.6, 13.4] (not reliable; {AWAY}) and, not told apart, "
+        "M1 24.0 ms [23.6, 24.4] (volume conduction not excluded); 112 trials."
+    ]
+
+
+def test_leads_between_potentials_carry_that_volume_conduction_is_not_excluded():
+    said = _said(verdicts=(_verdict(caveat="S1: volume conduction not excluded; lagged input"),))
+    assert said[0].endswith("q = .01, 112 trials; volume conduction not excluded.")
+    none = _verdict(verdict="no lead shown", leader="", smallest_detectable=NAN)
+    assert _said(verdicts=(none,))[0].endswith("q = .01, 112 trials.")
 
 
 def test_verdicts_carry_net_interval_q_and_count_and_claims_come_first():
@@ -97,6 +115,22 @@ def test_sinks_are_placed_with_depth_layer_and_time():
         "S1, early: strongest sink at 598 um [590, 606] in L4, greatest at 13.0 ms [12.6, 13.4], "
         "-0.81 uA/mm^3 (single, 112 trials)."
     ]
+    lost = {**row, "condition": "pad", "depth_um": NAN, "note": "not found (p = 0.3)"}
+    assert _said(sinks=(lost, row))[0].endswith(
+        "uA/mm^3 (single, 112 trials); no sink shown (pad: not found (p = 0.3))."
+    )
+    assert _said(sinks=(lost,)) == ["S1, early: no sink shown (pad: not found (p = 0.3))."]
+
+
+def test_an_area_without_current_source_density_is_named_once():
+    note = f"fewer than 5 good contacts: no current source density; {HERE}"
+    rows = tuple(
+        {"area": "S1", "condition": condition, "window": window, "kind": kind, "note": note}
+        for window in ("early", "late")
+        for condition in ("single", "pad")
+        for kind in ("sink", "source")
+    )
+    assert _said(sinks=rows) == ["S1: fewer than 5 good contacts: no current source density."]
 
 
 def test_nothing_is_said_of_what_was_not_recorded():
