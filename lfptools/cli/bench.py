@@ -27,6 +27,8 @@ _PAGE = "bench.ipynb"
 _START_S = 60.0
 #: Tells the bench that it stands on a page of its own and needs no picture for a saved notebook.
 PAGE_VARIABLE = "LFPTOOLS_BENCH_PAGE"
+#: The products behind an answer are small: more BLAS threads get into one another's way.
+_ONE_THREAD = {"OPENBLAS_NUM_THREADS": "1", "OMP_NUM_THREADS": "1", "MKL_NUM_THREADS": "1"}
 
 
 def serve(session: Path, *, browser: bool) -> None:
@@ -49,7 +51,7 @@ def serve(session: Path, *, browser: bool) -> None:
         with log.open("wb") as said:
             server = subprocess.Popen(
                 command(port, Path(folder)),
-                env=os.environ | {PAGE_VARIABLE: "1", "JUPYTER_TOKEN": token},
+                env=os.environ | {PAGE_VARIABLE: "1", "JUPYTER_TOKEN": token} | _ONE_THREAD,
                 stdout=said,
                 stderr=said,
                 start_new_session=True,
