@@ -5,7 +5,7 @@ from pathlib import Path
 from typing import Any
 
 from lfptools.cut_cache import cached_cut
-from lfptools.errors import LfptoolsError
+from lfptools.errors import InputError, LfptoolsError
 from lfptools.io.opening import open_session
 from lfptools.model import CutSession, Session
 from lfpwidgets.answers import Answers
@@ -48,6 +48,8 @@ class Bench:
 
     def __init__(self, session: str | Path | Session | CutSession) -> None:
         cut, path = _cut(session)
+        if not cut.areas:
+            raise InputError("the session holds no LFP; the bench shows averages of the field")
         self.state = BenchState(cut, path=path)
         self._restored = take_over(self.state)
         self.answers = Answers(cut)
