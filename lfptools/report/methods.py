@@ -5,6 +5,7 @@ from collections.abc import Callable
 import numpy as np
 
 from lfptools.analysis.results import Results
+from lfptools.choices import WindowChoice
 from lfptools.plot.marks import chosen, number
 from lfptools.report.manifest import GIVEN, signals, trial_counts, versions
 from lfptools.waves import ONSET_FRACTION
@@ -56,6 +57,15 @@ def methods(results: Results) -> str:
 
 def _span(span_ms: tuple[float, float]) -> str:
     return f"{span_ms[0]:g} to {span_ms[1]:g} ms"
+
+
+def _own(window: WindowChoice) -> str:
+    """Return the spans and signs that areas have of their own."""
+    said = ", ".join(
+        f"in {area} {_span(own.span_ms or window.span_ms)}, {own.extremum or window.extremum}"
+        for area, own in window.for_.items()
+    )
+    return f" ({said})" if said else ""
 
 
 def _has(results: Results, table: str, column: str, **wanted: str) -> bool:
@@ -117,7 +127,7 @@ def _waves(results: Results) -> Part | None:
         return None
     choices = results.choices
     windows = "; ".join(
-        f"{each.name} {_span(each.span_ms)}, {each.extremum}"
+        f"{each.name} {_span(each.span_ms)}, {each.extremum}{_own(each)}"
         + ("" if each.chosen == "before" else ", chosen on these trials")
         for each in choices.window
     )

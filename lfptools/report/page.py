@@ -20,6 +20,7 @@ from lfptools.plot.style import DPI
 from lfptools.report.page_tables import PageTable, page_table
 from lfptools.report.sentences import SMALLEST, in_short
 from lfptools.report.texts import CAUTIONS, CHOSEN_HERE, SECTIONS, SectionText
+from lfptools.units import ms_from_s
 
 
 def page(results: Results, account: Mapping[str, Any]) -> str:
@@ -45,6 +46,7 @@ def page(results: Results, account: Mapping[str, Any]) -> str:
         account=account,
         areas=_areas(results, account),
         conditions=_conditions(account),
+        windows=windows_table(results),
         chosen_here=_chosen_here(results),
         said=said,
         smallest_said=any(SMALLEST in sentence for each in said for sentence in each.sentences),
@@ -123,6 +125,35 @@ def _conditions(account: Mapping[str, Any]) -> PageTable:
     )
     headings = ("condition", "stimuli", "accepted trials")
     return PageTable("Trials", headings, rows, folded=False, notes=why or ("rejected: none",))
+
+
+def windows_table(results: Results) -> PageTable | None:
+    """Return the windows, an area with a span or sign of its own in a line of its own."""
+    rows = []
+    for window in results.choices.window:
+        held = [area for area in results.cut.area_names if window.holds(area)]
+        plain = [area for area in held if area not in window.for_]
+        groups = [plain] if plain else []
+        for areas in groups + [[area] for area in held if area in window.for_]:
+            rows.append(
+                (
+                    window.name,
+                    ", ".join(areas),
+                    _span_ms(window.span_s(areas[0])),
+                    window.extremum_in(areas[0]),
+                    _span_ms(window.direction_span_s),
+                    window.chosen,
+                )
+            )
+    headings = (
+        "window", "areas", "span (ms)", "wave", "span for coupling and direction (ms)",
+        "chosen",
+    )  # fmt: skip
+    return PageTable("Windows", headings, tuple(rows), folded=False) if rows else None
+
+
+def _span_ms(span_s: tuple[float, float]) -> str:
+    return f"{ms_from_s(span_s[0]):g} to {ms_from_s(span_s[1]):g}"
 
 
 def _chosen_here(results: Results) -> str:

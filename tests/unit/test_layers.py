@@ -1,9 +1,8 @@
-"""Sinks, the signal that stands for an area, smoothing and proposed windows."""
+"""Sinks, the signal that stands for an area, and smoothing."""
 
 import numpy as np
 import pytest
 
-from lfptools.analysis.windows import propose_windows
 from lfptools.csd import csd_operator, csd_signals
 from lfptools.errors import InputError
 from lfptools.evoked import SMOOTHING_GRID_MS, average, least_risk_smoothing, smooth
@@ -184,23 +183,3 @@ def test_band_of_an_average_is_the_t_interval():
 def test_an_average_needs_two_trials():
     with pytest.raises(InputError, match="condition 'pad' has 0 trials"):
         average(course(1.0), CONDITION, "pad", level=0.95)
-
-
-def test_windows_are_proposed_around_both_waves_and_marked():
-    rng = np.random.default_rng(1)
-    wave = -np.exp(-0.5 * ((TIME - 0.03) / 0.006) ** 2)
-    wave -= 0.7 * np.exp(-0.5 * ((TIME - 0.15) / 0.02) ** 2)
-    data = wave + 0.5 * rng.normal(size=(50, 1, len(TIME)))
-    one = Signals("S1", "csd", np.array([5]), np.array([500.0]), data, TIME, RATE)
-    found = propose_windows([one], CONDITION, ["single"], (0.0, 0.3))
-    assert [each.name for each in found] == ["wave 1", "wave 2"]
-    assert found[0].span_ms[0] < 30 < found[0].span_ms[1] < 100
-    assert found[1].span_ms[0] < 150 < found[1].span_ms[1]
-    assert {each.chosen for each in found} == {"on these trials"}
-    assert {each.extremum for each in found} == {"trough"}
-
-
-def test_no_window_is_proposed_in_noise():
-    data = np.random.default_rng(1).normal(size=(50, 1, len(TIME)))
-    one = Signals("S1", "csd", np.array([5]), np.array([500.0]), data, TIME, RATE)
-    assert propose_windows([one], CONDITION, ["single"], (0.0, 0.3)) == []

@@ -4,7 +4,7 @@ from dataclasses import replace
 
 import msgspec
 
-from lfptools.choices import DirectionChoice, LatencyChoice
+from lfptools.choices import DirectionChoice, LatencyChoice, WindowFor
 from lfptools.report.methods import REFERENCES, methods
 from tests.report_sessions import N_TRIALS, REJECTED, results
 
@@ -43,6 +43,18 @@ def test_only_methods_that_were_used_are_cited():
     assert not {"poisson", "ppc"} & lfp_only
     one_area = _cited(methods(results(areas=("S1",), spikes=False)))
     assert one_area == {"bootstrap", "csd", "ends"}
+
+
+def test_spans_that_areas_have_of_their_own_are_named():
+    early, late = results().choices.window
+    own = {"M1": WindowFor(span_ms=(20.0, 70.0)), "S1": WindowFor(extremum="peak")}
+    windows = [msgspec.structs.replace(early, for_=own), late]
+    choices = msgspec.structs.replace(results().choices, window=windows)
+    text = methods(replace(results(), choices=choices))
+    assert (
+        "(early 5 to 60 ms, trough (in M1 20 to 70 ms, trough, in S1 5 to 60 ms, peak); "
+        "late 100 to 180 ms, trough)" in text
+    )
 
 
 def test_a_signal_whose_depth_was_given_is_said_to_be():

@@ -7,8 +7,9 @@ from html.parser import HTMLParser
 import msgspec
 import pytest
 
+from lfptools.choices import WindowFor
 from lfptools.report.manifest import manifest
-from lfptools.report.page import page
+from lfptools.report.page import page, windows_table
 from lfptools.report.texts import CAUTIONS
 from tests.report_sessions import REJECTED, results
 
@@ -67,7 +68,32 @@ def test_every_section_has_its_figures_with_alternative_text_and_its_tables():
     alt = [value for tag, name, value in read.attributes if (tag, name) == ("img", "alt")]
     assert len(alt) == read.tags.count("img") == 7
     assert all(len(each) > 40 for each in alt)
-    assert read.tags.count("table") == 11  # with areas, trials and settings
+    assert read.tags.count("table") == 12  # with areas, trials, windows and settings
+
+
+def test_windows_are_listed_with_the_spans_that_areas_have_of_their_own():
+    early, late = results().choices.window
+    early = msgspec.structs.replace(
+        early, for_={"M1": WindowFor(span_ms=(20.0, 70.5)), "S1": WindowFor(extremum="peak")}
+    )
+    late = msgspec.structs.replace(late, areas=["M1"], chosen="on these trials")
+    table = windows_table(_with_windows(early, late))
+    assert table.headings[:3] == ("window", "areas", "span (ms)")
+    assert table.rows == (
+        ("early", "S1", "5 to 60", "peak", "0 to 100", "before"),
+        ("early", "M1", "20 to 70.5", "trough", "0 to 100", "before"),
+        ("late", "M1", "100 to 180", "trough", "100 to 180", "on these trials"),
+    )
+    plain = windows_table(results())
+    assert [row[:2] for row in plain.rows] == [("early", "S1, M1"), ("late", "S1, M1")]
+    assert windows_table(_with_windows()) is None
+    assert "span for coupling and direction (ms)" in _read(_page()).text
+
+
+def _with_windows(*windows):
+    found = results()
+    choices = msgspec.structs.replace(found.choices, window=list(windows))
+    return replace(found, choices=choices)
 
 
 def test_the_smallest_detectable_net_is_explained_only_where_one_is_said():
