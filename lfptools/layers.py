@@ -63,8 +63,13 @@ def usable_contacts(trials: Trials) -> np.ndarray:
 
     At the ends the second derivative rests on a duplicated contact.
     """
-    usable = ~trials.contacts.bad.copy()
-    usable[[0, -1]] = False
+    return _may_stand(trials.contacts, density=True)
+
+
+def _may_stand(contacts: Contacts, *, density: bool) -> np.ndarray:
+    usable = ~contacts.bad
+    if density:
+        usable[[0, -1]] = False
     return usable
 
 
@@ -92,23 +97,44 @@ def candidates(trials: Trials, csd: Signals | None, kind: str) -> Candidates:
     """
     usable = usable_contacts(trials)
     if kind == "csd" and csd is not None and usable.any():
-        return Candidates(csd, usable, given=_given(trials, usable))
+        return Candidates(csd, usable, given=_given(trials, density=True))
     few = f"fewer than {MIN_CONTACTS} good contacts; " if kind == "csd" else ""
     good = ~trials.contacts.bad
-    return Candidates(_all_contacts(trials), good, few + ONE_CONTACT, _given(trials, good))
+    return Candidates(_all_contacts(trials), good, few + ONE_CONTACT, _given(trials, density=False))
 
 
-def _given(trials: Trials, usable: np.ndarray) -> int | None:
-    """Return the contact at the depth that the user named, None where none was named."""
-    wanted_um, contacts = trials.signal_depth_um, trials.contacts
-    if wanted_um is None:
+def _given(trials: Trials, *, density: bool) -> int | None:
+    if trials.signal_depth_um is None:
         return None
-    at = contacts.nearest(wanted_um)
+    return given_contact(trials.area, trials.contacts, trials.signal_depth_um, density=density)
+
+
+def given_contact(area: str, contacts: Contacts, depth_um: float, *, density: bool) -> int:
+    """Return the index of the contact that the user chose to stand for an area.
+
+    Parameters
+    ----------
+    area : str
+        For the message.
+    contacts : Contacts
+        Of the area, bad ones marked.
+    depth_um : float
+        `signal_depth_um` of the session file.
+    density : bool
+        Whether current source density stands for the area, or the LFP.
+
+    Raises
+    ------
+    InputError
+        If no contact can stand for the area there; it names those that can.
+    """
+    usable = _may_stand(contacts, density=density)
+    at = contacts.nearest(depth_um)
     if at is not None and usable[at]:
         return at
     listed = ", ".join(f"{depth:g}" for depth in contacts.depth_um[usable])
     raise InputError(
-        f"signal_depth_um of area {trials.area} is {wanted_um:g} um, {_why_not(contacts, at)}; "
+        f"signal_depth_um of area {area} is {depth_um:g} um, {_why_not(contacts, at)}; "
         f"needed is the depth of a contact that can stand for the area: {listed} um"
     )
 

@@ -79,6 +79,11 @@ class Recording(Frozen):
         """Recorded time, gaps not counted."""
         return self.n_samples / self.rate_hz
 
+    @property
+    def spans_s(self) -> tuple[tuple[float, float], ...]:
+        """First and last moment of each run on the source's clock, in s."""
+        return tuple((run.start_s, run.start_s + run.n_samples / self.rate_hz) for run in self.runs)
+
     def read_uv(self, first: int, last: int, channels: np.ndarray) -> np.ndarray:
         """Return samples [first, last) of `channels` in uV, shape (n_channels, n_samples)."""
         counts = self.fetch(first, last, channels)

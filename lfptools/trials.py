@@ -47,6 +47,7 @@ class AreaSurvey:
     amplitude_uv: np.ndarray  # (n_events, n_contacts) peak to peak, NaN where not read
     step_uv: np.ndarray  # (n_events, n_contacts) SD of the steps from one sample to the next
     local_uv: np.ndarray  # (n_events, n_contacts) the same, the most similar neighbour taken off
+    sd_uv: np.ndarray  # (n_events, n_contacts) SD over the window
 
 
 def windows_of(
@@ -70,11 +71,12 @@ def survey(area: Area, time_s: np.ndarray, span_s: tuple[float, float]) -> AreaS
     assert area.recording is not None
     assert area.contacts is not None
     shape = (len(time_s), len(area.contacts))
-    amplitude, step, local = (np.full(shape, np.nan) for _ in range(3))
+    amplitude, step, local, sd = (np.full(shape, np.nan) for _ in range(4))
     for event, _, window in windows_of(area.recording, area.contacts.channel, time_s, span_s):
         amplitude[event] = np.ptp(window, axis=1)
+        sd[event] = window.std(axis=1)
         step[event], local[event] = clean.step_noise(np.diff(window, axis=1))
-    return AreaSurvey(amplitude_uv=amplitude, step_uv=step, local_uv=local)
+    return AreaSurvey(amplitude_uv=amplitude, step_uv=step, local_uv=local, sd_uv=sd)
 
 
 def cut_trials(session: Session, *, progress: Progress = no_progress) -> CutSession:

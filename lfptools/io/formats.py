@@ -65,7 +65,9 @@ FORMATS: dict[str, Format] = {
         ),
         Format(
             "table",
-            "CSV of spikes with columns unit and time_s",
+            "CSV of spikes with columns unit and time_s; may have area (needed where several "
+            "areas take units from the file) and depth_um (needed for the field of the "
+            "neighbouring contact)",
             carries=("units",),
             units="lfptools.io.tables:read_spikes_csv",
         ),

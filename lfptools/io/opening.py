@@ -1,5 +1,6 @@
 """A session file comes in; a Session goes out, its recordings open and not yet read."""
 
+from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
 
@@ -161,25 +162,28 @@ def _events(found: SessionFile, path: Path) -> Events:
     return replace(events, time_s=events.time_s + s_from_ms(choice.delay_ms), dropped=dropped)
 
 
+def inside_spans(time_s: np.ndarray, spans_s: Sequence[tuple[float, float]]) -> np.ndarray:
+    """Return which times lie in one of the spans, ends included, shape (n_times,)."""
+    inside = np.zeros(len(time_s), dtype=bool)
+    for first, last in spans_s:
+        inside |= (time_s >= first) & (time_s <= last)
+    return inside
+
+
 def _need_events_inside(
     path: Path, events: Events, recordings: list[Recording], spikes: SpikeTrains | None
 ) -> None:
     """Refuse a table whose events all lie outside what was recorded: its clock is another."""
-    spans = [
-        (run.start_s, run.start_s + run.n_samples / recording.rate_hz)
-        for recording in recordings
-        for run in recording.runs
-    ]
+    spans = [span for recording in recordings for span in recording.spans_s]
     if not recordings and spikes is not None:
         times = np.concatenate([*spikes.time_s, np.empty(0)])
         spans = [(times.min(), times.max())] if times.size else []
-    inside = np.zeros(len(events), dtype=bool)
-    for first, last in spans:
-        inside |= (events.time_s >= first) & (events.time_s <= last)
-    if not inside.any():
+    if not inside_spans(events.time_s, spans).any():
         low, high = np.min(spans or np.nan), np.max(spans or np.nan)
+        in_ms = inside_spans(s_from_ms(1) * events.time_s, spans).all()
         raise ReaderError(
             f"{path}: all {len(events)} events, {events.time_s.min():g} to "
             f"{events.time_s.max():g} s, lie outside what was recorded, {low:g} to {high:g} s; "
-            "needed are times on the clock of the recordings"
+            "needed are times on the clock of the recordings, in s"
+            + ("; are they in ms?" if in_ms else "")
         )

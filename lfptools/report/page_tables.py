@@ -3,12 +3,15 @@
 The CSV files hold every column and digit.
 """
 
+import re
+from collections import Counter
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import partial
 
 import numpy as np
 
+from lfptools.analysis.prepared import CHOSEN_HERE
 from lfptools.plot.marks import Row, number
 from lfptools.plot.words import cell, probability, rounded, verdict_words
 
@@ -24,6 +27,10 @@ class PageTable:
     rows: tuple[tuple[str, ...], ...]
     folded: bool
     notes: tuple[str, ...] = ()
+
+
+#: Reasons that are counted one by one.
+_MOST_REASONS = 8
 
 
 def _text(name: str) -> Callable[[Row], str]:
@@ -180,8 +187,28 @@ _CAPTIONS = {
 }
 #: Long tables stay folded.
 _FOLDED = ("contacts", "firing", "coupling", "direction")
-#: In these tables only rows with one of the columns are printed; the rest is counted.
+#: In these tables only rows with one of the columns are printed; the rest is counted by reason.
 _NEEDS = {"coupling": ("value",), "direction": ("net", "p")}
+
+
+def _not_estimated(name: str, rows: Sequence[Row]) -> list[str]:
+    """Count rows without an estimate by reason, the commonest first."""
+    reasons = Counter(_reason(row) for row in rows).most_common()
+    first, rest = reasons[:_MOST_REASONS], sum(count for _, count in reasons[_MOST_REASONS:])
+    notes = [f"not estimated: {_rows(count)} ({reason})" for reason, count in first]
+    if rest:
+        notes.append(f"not estimated: {_rows(rest)} more ({name}.csv gives each reason)")
+    return notes
+
+
+def _rows(count: int) -> str:
+    return f"{count} row" if count == 1 else f"{count} rows"
+
+
+def _reason(row: Row) -> str:
+    """Return why a row was not estimated, without counts that differ from row to row."""
+    said = str(row["note"]).removesuffix(CHOSEN_HERE).removesuffix("; ")
+    return re.sub(r"^\d+ spikes?;", "too few spikes;", said)
 
 
 def page_table(name: str, rows: Sequence[Row]) -> PageTable:
@@ -195,17 +222,18 @@ def page_table(name: str, rows: Sequence[Row]) -> PageTable:
         All of them.
     """
     needs = _NEEDS.get(name, ())
-    shown = [row for row in rows if not needs or any(np.isfinite(number(row, c)) for c in needs)]
+    shown: list[Row] = []
+    left: list[Row] = []
+    for row in rows:
+        has = not needs or any(np.isfinite(number(row, column)) for column in needs)
+        (shown if has else left).append(row)
     columns = [each for each in _COLUMNS[name] if each is not _NOTE or any(map(_NOTE[1], shown))]
     notes = list(dict.fromkeys(str(row["caveat"]) for row in rows)) if name == "verdicts" else []
-    if len(shown) < len(rows):
-        notes.append(
-            f"{len(rows) - len(shown)} rows were not estimated; {name}.csv gives each reason."
-        )
+    notes += _not_estimated(name, left)
     return PageTable(
-        caption=f"{_CAPTIONS[name]} ({len(shown)} rows)",
+        caption=f"{_CAPTIONS[name]} ({_rows(len(shown))})",
         headings=tuple(heading for heading, _ in columns),
         rows=tuple(tuple(read(row) for _, read in columns) for row in shown),
-        folded=name in _FOLDED,
+        folded=name in _FOLDED and bool(shown),
         notes=tuple(notes),
     )

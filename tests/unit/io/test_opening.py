@@ -115,6 +115,15 @@ def test_events_wholly_outside_every_recording(folder):
     assert len(open_session(folder / "session.toml").events) == 2
 
 
+@pytest.mark.parametrize(("times", "asked"), [((11000, 12250), True), ((11000, 99000), False)])
+def test_events_in_ms_are_suspected(times, asked, folder):
+    rows = "".join(f"{time},a\n" for time in times)
+    (folder / "events.csv").write_text(f"time_s,condition\n{rows}")
+    with pytest.raises(ReaderError, match="lie outside what was recorded") as caught:
+        open_session(folder / "session.toml")
+    assert ("are they in ms?" in str(caught.value)) is asked
+
+
 def test_no_event_at_all(folder):
     (folder / "events.csv").write_text("time_s,condition\n")
     with pytest.raises(ReaderError, match="holds no rows"):
