@@ -1,7 +1,8 @@
 """A session file in, the bench as a page of its own out, on this machine alone.
 
-The page is a one-cell notebook in a temporary folder, served through Voila by a Jupyter server
-bound to 127.0.0.1 and closed to everybody without its token.
+The page is a one-cell notebook in a temporary folder, served by Voila, bound to 127.0.0.1 and
+closed to everybody without its token. One kernel has always run the notebook ahead, so that a
+page opens at once.
 """
 
 import json
@@ -41,24 +42,27 @@ def serve(session: Path, *, browser: bool) -> None:
     LfptoolsError
         If the server does not come up.
     """
-    for needed in ("voila", "jupyter_server"):
+    for needed in ("voila",):
         if find_spec(needed) is None:
             raise InputError(f"the bench needs {needed}: pip install 'lfptools[app]'")
     token, port = secrets.token_urlsafe(24), free_port()
     with TemporaryDirectory(prefix="lfptools-bench-") as folder:
         (Path(folder) / _PAGE).write_text(json.dumps(notebook(session.resolve())))
+        # The folder is this user's alone; a command line can be read by everybody.
+        (Path(folder) / "voila.json").write_text(json.dumps({"Voila": {"token": token}}))
         log = Path(folder) / "server.log"
         with log.open("wb") as said:
             server = subprocess.Popen(
-                command(port, Path(folder)),
-                env=os.environ | {PAGE_VARIABLE: "1", "JUPYTER_TOKEN": token} | _ONE_THREAD,
+                command(port),
+                cwd=folder,
+                env=os.environ | {PAGE_VARIABLE: "1"} | _ONE_THREAD,
                 stdout=said,
                 stderr=said,
                 start_new_session=True,
             )
         try:
             _wait(server, port, token, log)
-            address = f"http://{_HOST}:{port}/voila/render/{_PAGE}?token={token}"
+            address = f"http://{_HOST}:{port}/?token={token}"
             print(f"bench: {address}", flush=True)
             print("Ctrl-C ends it", flush=True)
             if browser:
@@ -68,17 +72,15 @@ def serve(session: Path, *, browser: bool) -> None:
             end(server)
 
 
-def command(port: int, folder: Path) -> list[str]:
-    """Return the command of the server; the token travels in the environment, not here."""
+def command(port: int) -> list[str]:
+    """Return the command of the server; the token stands in a file of the folder, not here."""
     return [
-        sys.executable, "-m", "jupyter_server",
-        f"--ServerApp.ip={_HOST}",
-        f"--ServerApp.port={port}",
-        "--ServerApp.port_retries=0",
-        f"--ServerApp.root_dir={folder}",
-        "--ServerApp.open_browser=False",
-        "--ServerApp.jpserver_extensions={'voila.server_extension': True}",
-        "--ServerApp.allow_root=True",
+        sys.executable, "-m", "voila", _PAGE,
+        "--no-browser",
+        f"--Voila.ip={_HOST}",
+        f"--port={port}",
+        "--Voila.port_retries=0",
+        "--preheat_kernel=True",
         "--VoilaConfiguration.show_tracebacks=True",
     ]  # fmt: skip
 
@@ -115,7 +117,7 @@ def _wait(server: subprocess.Popen, port: int, token: str, log: Path) -> None:
     """Return once the server answers to the token."""
     ends = time.monotonic() + _START_S
     request = urllib.request.Request(
-        f"http://{_HOST}:{port}/api/status", headers={"Authorization": f"token {token}"}
+        f"http://{_HOST}:{port}/voila/static/voila.js", headers={"Authorization": f"token {token}"}
     )
     while time.monotonic() < ends:
         if server.poll() is not None:

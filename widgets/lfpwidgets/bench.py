@@ -10,7 +10,7 @@ from lfptools.io.opening import open_session
 from lfptools.model import CutSession, Session
 from lfpwidgets.answers import Answers
 from lfpwidgets.full import FullAnswer
-from lfpwidgets.keepsake import keep, take_over
+from lfpwidgets.keepsake import keep, keepsake_path, take_over
 from lfpwidgets.leaving import Leaving
 from lfpwidgets.newest import Background, Newest
 from lfpwidgets.quick import QuickAnswer
@@ -47,7 +47,16 @@ class Bench:
     """
 
     def __init__(self, session: str | Path | Session | CutSession) -> None:
-        cut, path = _cut(session)
+        self._session = session
+        self._newest: Newest[dict[str, Any]] = Newest(self._move, self._failed)
+        self._background = Background(self._failed)
+        self._picture: Any = None
+        self._open()
+        self.surface = Surface(self._heard, **self._scene.traits())
+
+    def _open(self) -> None:
+        """Open the session and whatever was kept of it, as it is now."""
+        cut, path = _cut(self._session)
         if not cut.areas:
             raise InputError("the session holds no LFP; the bench shows averages of the field")
         self.state = BenchState(cut, path=path)
@@ -55,13 +64,18 @@ class Bench:
         self.answers = Answers(cut)
         self._scene = Scene(self.state, self.answers)
         self._leaving = Leaving(self.state, self._scene)
-        self._newest: Newest[dict[str, Any]] = Newest(self._move, self._failed)
-        self._background = Background(self._failed)
         self._full: dict[str, Any] | None = None
-        self._picture: Any = None
         self._gripped = False
-        self.surface = Surface(self._heard, **self._scene.traits())
+        self._opened = self._on_disk()
         self.state.observe(self._changed)
+
+    def _on_disk(self) -> tuple[bytes, bytes]:
+        """Return the session file and what is kept beside it, as they are on disk."""
+        path = self.state.path
+        if path is None:
+            return b"", b""
+        kept = keepsake_path(path)
+        return path.read_bytes(), kept.read_bytes() if kept.exists() else b""
 
     @property
     def value(self) -> View:
@@ -95,9 +109,7 @@ class Bench:
     def _act(self, message: dict[str, Any]) -> None:
         state, do = self.state, message.get("do")
         if do == "hello":
-            self._answer()
-            if self._restored:
-                self.surface.say(_RESTORED)
+            self._hello()
         elif do == "take":
             state.take(message["name"])
         elif do == "grip":
@@ -134,6 +146,15 @@ class Bench:
             self._leave(do)
         else:
             raise LfptoolsError(f"the page asked for {do!r}, which the bench does not know")
+
+    def _hello(self) -> None:
+        """Greet a page; one whose kernel ran ahead of it may find other files by now."""
+        if not self.state.unsaved and self._on_disk() != self._opened:
+            self._open()
+            self._redraw()
+        self._answer()
+        if self._restored:
+            self.surface.say(_RESTORED)
 
     def _move(self, message: dict[str, Any]) -> None:
         """Follow the hand: the newest position only."""
