@@ -26,7 +26,7 @@ from lfptools.spike_field import (
     phase_estimates,
     phase_vectors,
 )
-from lfptools.spikes import SpikesAround, spikes_around
+from lfptools.spikes import SpikesAround, said, spikes_around
 from lfptools.trials import FEW_TRIALS, MIN_TRIALS, window_mask
 
 #: With fewer spikes nothing is estimated.
@@ -225,7 +225,7 @@ def _estimate(
     if why:
         return {}, why
     if len(spikes) < MIN_SPIKES:
-        return {}, f"{len(spikes)} spikes; not estimated below {MIN_SPIKES}"
+        return {}, f"{said(len(spikes))}; not estimated below {MIN_SPIKES}"
     lfp_uv = field.trials.data_uv[condition.trials, field.contact].astype(float)
     inside = np.flatnonzero(window_mask(field.trials.time_s, span_s))
     if not np.ptp(lfp_uv[:, inside], axis=1).any():

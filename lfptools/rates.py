@@ -25,7 +25,7 @@ from lfptools.rate_change import (
     stimuli_of,
     tested_changes,
 )
-from lfptools.spikes import bin_edges, binned_counts, spikes_around
+from lfptools.spikes import bin_edges, binned_counts, said, spikes_around
 from lfptools.trials import FEW_TRIALS, MIN_TRIALS, window_mask
 
 #: A change is called where its q is at most this.
@@ -199,7 +199,7 @@ def _estimate(
     for place, row in enumerate(rows):
         if not counts.enough[place]:
             row["note"] = (
-                f"{counts.n_spikes[place]} spikes in baseline and window; "
+                f"{said(counts.n_spikes[place])} in baseline and window; "
                 f"not estimated below {MIN_SPIKES}"
             )
             continue

@@ -130,3 +130,8 @@ def _needs_rising(time_s: np.ndarray) -> None:
             f"spike {at + 1} at {time_s[at + 1]:.6f} s follows one at {time_s[at]:.6f} s; "
             "spike times must be numbers that rise"
         )
+
+
+def said(n_spikes: int) -> str:
+    """Return a count in words: "1 spike", "12 spikes"."""
+    return f"{n_spikes} spike" if n_spikes == 1 else f"{n_spikes} spikes"

@@ -1,5 +1,6 @@
 """A session file (TOML) comes in, checked choices go out; or plain tables in, a file out."""
 
+import re
 import tomllib
 from collections.abc import Mapping
 from dataclasses import dataclass
@@ -101,6 +102,8 @@ def session_bytes(path: Path) -> bytes:
     SessionFileError
         If it is missing or cannot be read.
     """
+    if path.is_dir():
+        raise SessionFileError(f"{path}: is a folder; needed is the session file (TOML) in it")
     try:
         return path.read_bytes()
     except FileNotFoundError:
@@ -115,7 +118,22 @@ def _toml(content: bytes, path: Path) -> dict:
     except UnicodeDecodeError as cause:
         raise SessionFileError(f"{path}: is no text in UTF-8 ({cause})") from None
     except tomllib.TOMLDecodeError as cause:  # its text ends with line and column
-        raise SessionFileError(f"{path}: is not valid TOML: {cause}") from None
+        hint = _bare_word(content.decode("utf-8"), str(cause))
+        raise SessionFileError(f"{path}: is not valid TOML: {cause}{hint}") from None
+
+
+def _bare_word(text: str, cause: str) -> str:
+    """Return a hint where a word without quotes stands for a value."""
+    at = re.match(r"Invalid value \(at line (\d+), column (\d+)\)", cause)
+    if at is None:
+        return ""
+    rest = text.split("\n")[int(at[1]) - 1][int(at[2]) - 1 :]
+    word = re.match(r"[^\W\d][^\s,\]}#]*", rest)
+    if word is None:
+        return ""
+    if word[0].lower() in ("true", "false", "inf", "nan"):
+        return f"; needed is {word[0].lower()}"
+    return f'; text needs quotes: "{word[0]}"'
 
 
 def write_session_file(

@@ -1,6 +1,7 @@
 """A CSV of events or spikes comes in; events or stored units go out."""
 
 import csv
+import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -11,6 +12,9 @@ from lfptools.errors import ReaderError
 from lfptools.io.guard import reading
 from lfptools.io.stored_units import StoredUnit
 from lfptools.model import Events
+
+#: What other programs put between columns.
+_SEPARATORS = {";": "semicolons", "\t": "tabs"}
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -86,7 +90,7 @@ def read_spikes_csv(path: Path) -> list[StoredUnit]:
     Returns
     -------
     list of StoredUnit
-        In the order of first appearance.
+        In the natural order of their names: u1, u2, u10.
 
     Raises
     ------
@@ -100,7 +104,7 @@ def read_spikes_csv(path: Path) -> list[StoredUnit]:
         for name, texts in table.columns.items()
         if name not in ("unit", "time_s")
     }
-    order = {name: index for index, name in enumerate(dict.fromkeys(names))}
+    order = {name: index for index, name in enumerate(sorted(set(names), key=_natural))}
     unit_of_row = np.array([order[name] for name in names])
     units = []
     for name, index in order.items():
@@ -110,6 +114,12 @@ def read_spikes_csv(path: Path) -> list[StoredUnit]:
         }
         units.append(StoredUnit(name, time_s[rows], columns))
     return units
+
+
+def _natural(name: str) -> list[tuple[int, str]]:
+    """Return a key that sorts the numbers within names as numbers."""
+    parts = re.split(r"([0-9]+)", name)
+    return [(int(part) if number % 2 else 0, part) for number, part in enumerate(parts)]
 
 
 def _one_value(
@@ -149,9 +159,13 @@ def _read_table(path: Path, required: Sequence[str]) -> _Table:
 def _check_header(path: Path, header: list[str], required: Sequence[str]) -> None:
     missing = [name for name in required if name not in header]
     if missing:
+        other = next((name for mark, name in _SEPARATORS.items() if mark in "".join(header)), "")
+        separated = (
+            f"; its columns seem to be separated by {other}: needed is a comma between columns"
+        )
         raise ReaderError(
             f"{path}: row 1 has no column {missing[0]}; it has {', '.join(header) or 'nothing'}; "
-            f"needed are {' and '.join(required)}"
+            f"needed are {' and '.join(required)}" + (separated if other else "")
         )
     for index, name in enumerate(header):
         if not name or name in header[:index]:

@@ -68,7 +68,7 @@ def draw_raster(
         Its name, for the title.
     looks : mapping of condition to Look
     n_trials : mapping of condition to int
-        Trials of each; the first 40 are drawn.
+        Trials of each; the first 40 are drawn, and the title says so.
     spans_ms : mapping of window to (first, last)
         Shaded, in ms.
 
@@ -97,6 +97,8 @@ def draw_raster(
     ax.set_ylim(max(top, 1), 0)
     ax.set_ylabel("trial")
     ax.set_xlabel("time after the stimulus (ms)")
-    few = f", first {most} trials each" if max(n_trials.values(), default=0) > most else ""
-    ax.set_title(f"unit {short(unit, 16)}{few}", loc="left")
+    cut = max(n_trials.values(), default=0) > most
+    # Either is short enough for one of three panels side by side.
+    title = f"{short(unit, 11)}, trials 1-{most}" if cut else f"unit {short(unit, 16)}"
+    ax.set_title(title, loc="left")
     return ax

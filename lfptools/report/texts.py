@@ -54,7 +54,7 @@ SECTIONS = (
         "is not found may still be there: too small for these trials, or at another depth. One "
         "contact stands for an area in all windows; where the current of a window enters "
         "elsewhere, the note says at which depth, and the rows of single contacts (under Current "
-        "by depth) show the wave there.",
+        "by depth) show the LFP there.",
     ),
     SectionText(
         title="Lags between areas",

@@ -2,7 +2,7 @@
 
 import subprocess
 import sys
-from itertools import combinations
+from itertools import combinations, pairwise
 
 import numpy as np
 import pytest
@@ -13,6 +13,8 @@ from matplotlib.patches import Rectangle
 from matplotlib.text import Text
 from matplotlib.transforms import Bbox
 
+from lfptools.plot.firing import draw_raster
+from lfptools.plot.layout import fit_titles, page_figure, panels
 from lfptools.plot.sheets import (
     SHEETS,
     averages_sheet,
@@ -220,6 +222,25 @@ def test_rasters_show_one_unit_an_area_and_no_more_rows_than_can_be_read():
     heights = np.concatenate([c.get_offsets()[:, 1] for c in lower.collections])
     assert heights.min() > 0
     assert heights.max() < 2 * N_TRIALS
+
+
+@pytest.mark.parametrize("unit", ["u3", "shank2-unit117-b"])
+def test_a_raster_that_leaves_trials_out_says_so_in_a_title_that_is_not_cut(unit):
+    # Three areas side by side leave the least room.
+    spikes = {"single": (np.arange(60), np.zeros(60)), "pad": (np.arange(30), np.zeros(30))}
+    with page_figure(2.0) as figure:
+        axes = panels(figure, 1, 3)
+        for ax in axes[0]:
+            draw_raster(ax, spikes, unit=unit, looks=looks(list(spikes)), spans_ms={},
+                        n_trials={"single": 60, "pad": 30})  # fmt: skip
+        fit_titles(axes)
+    for ax in axes[0]:
+        assert ax.get_title(loc="left").endswith(", trials 1-40")
+        assert ax.get_ylim() == (70, 0)
+        assert max(c.get_offsets()[:, 1].max() for c in ax.collections) < 70
+    figure.draw_without_rendering()
+    titles = [ax._left_title.get_window_extent() for ax in axes[0]]
+    assert all(a.x1 < b.x0 for a, b in pairwise(titles))
 
 
 def test_the_unit_shown_is_one_of_the_area():

@@ -211,6 +211,8 @@ def test_few_spikes_few_trials_and_a_flat_field_are_said():
     few = rows_of(whisk(noise(rng), trains([times])))
     assert {row["note"] for row in few} == {"19 spikes; not estimated below 20"}
     assert {row["n_spikes"] for row in few} == {19}
+    one = rows_of(whisk(noise(rng), trains([times[:1] + times[-1:] * 39])))
+    assert {row["note"] for row in one} == {"1 spike; not estimated below 20"}
     many = [np.array([0.02, 0.05, 0.08])] * 40
     short = whisk(noise(rng), trains([many]), condition=["single"] * 33 + ["pad"] * 7)
     notes = {(row["condition"], row["note"]) for row in rows_of(short)}

@@ -118,6 +118,10 @@ def test_few_spikes_are_said():
     assert late["note"].startswith("2 spikes")
     assert np.isnan([early["change_hz"], early["lo_hz"], early["p"]]).all()
     assert early["n_spikes"] == 2
+    one = [[np.array([0.02])] + [np.empty(0)] * 19]
+    early, late = rows_of(whisk(one, condition=["single"] * 20))
+    assert early["note"] == "1 spike in baseline and window; not estimated below 5"
+    assert late["note"].startswith("0 spikes in baseline")
 
 
 def test_few_trials_are_said(responding):

@@ -54,6 +54,32 @@ def test_an_outermost_contact_carries_no_current(bare, session_text, signal, dep
         read_session_file(bare / "session.toml")
 
 
+@pytest.mark.parametrize(
+    ("line", "hint"),
+    [
+        ("format = spikeglx", '; text needs quotes: "spikeglx"'),
+        ("areas = [S1, M1] # both", '; text needs quotes: "S1"'),
+        ("layers = { L4 = deep }", '; text needs quotes: "deep"'),
+        ("file = C:\\data\\a.csv", '; text needs quotes: "C:\\data\\a.csv"'),
+        ("paired = True", "; needed is true"),
+        ("gain_uv = .195", ""),
+        ("[[source]", ""),
+    ],
+)
+def test_a_word_without_quotes_is_told(line, hint, tmp_path):
+    path = tmp_path / "session.toml"
+    path.write_text(f'session = "whisk"\n{line}\n')
+    with pytest.raises(SessionFileError, match="is not valid TOML: ") as caught:
+        read_session_file(path)
+    assert str(caught.value).partition(")")[2] == hint
+    assert "line 2" in str(caught.value)
+
+
+def test_a_folder_is_no_session_file(tmp_path):
+    with pytest.raises(SessionFileError, match="is a folder; needed is the session file"):
+        read_session_file(tmp_path)
+
+
 def refuse(bare, session_text, old, new):
     """Read the session file with `old` replaced and return the message of its refusal."""
     assert session_text.count(old) >= 1, old
@@ -278,7 +304,7 @@ def test_missing_or_unreadable_file_is_named(tmp_path):
     with pytest.raises(SessionFileError, match="UTF-8"):
         read_session_file(tmp_path / "latin.toml")
     with pytest.raises(SessionFileError, match="cannot be read"):
-        read_session_file(tmp_path)
+        read_session_file(tmp_path / "latin.toml" / "session.toml")  # no folder
 
 
 @pytest.mark.parametrize(

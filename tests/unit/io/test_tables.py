@@ -32,7 +32,17 @@ def test_marks_of_other_programs_are_no_hindrance(tmp_path):
 
 EVENTS_REFUSED = [
     ("", "row 1 has no column time_s; it has nothing; needed are time_s and condition"),
-    ("time_s;condition\n1;a\n", "row 1 has no column time_s; it has time_s;condition"),
+    (
+        "time_s;condition\n1;a\n",
+        "row 1 has no column time_s; it has time_s;condition; needed are "
+        "time_s and condition; its columns seem to be separated by semicolons: needed is a comma "
+        "between columns",
+    ),
+    (
+        "time_s\tcondition\n1\ta\n",
+        "row 1 has no column time_s; it has time_s\tcondition; needed "
+        "are time_s and condition; its columns seem to be separated by tabs: needed is a comma",
+    ),
     ("time_s\n1\n", "row 1 has no column condition"),
     ("time_s,condition,time_s\n1,a,2\n", "row 1, column 3 is 'time_s'"),
     ("time_s,condition,\n1,a,2\n", "row 1, column 3 is ''"),
@@ -64,10 +74,17 @@ def test_a_missing_table_is_named(tmp_path):
 
 def test_spikes(tmp_path):
     text = "unit,time_s,depth_um,area\nb,2,150,S1\na,1,300,M1\nb,0.5,150,S1\n"
-    first, second = read_spikes_csv(table(tmp_path, text))
+    second, first = read_spikes_csv(table(tmp_path, text))  # by name
     assert (first.name, first.time_s.tolist(), first.depth_um) == ("b", [0.5, 2.0], 150.0)
     assert (second.name, second.time_s.tolist(), second.depth_um) == ("a", [1.0], 300.0)
     assert first.columns["area"] == "S1"
+
+
+def test_units_stand_in_the_natural_order_of_their_names(tmp_path):
+    names = ["u10", "u2", "b", "u1", "10", "9", "u2b10", "u2b9", "u02"]
+    text = "unit,time_s\n" + "".join(f"{name},1\n" for name in names)
+    found = [unit.name for unit in read_spikes_csv(table(tmp_path, text))]
+    assert found == ["9", "10", "b", "u1", "u02", "u2", "u2b9", "u2b10", "u10"]
 
 
 def test_spikes_without_depths(tmp_path):
