@@ -60,6 +60,7 @@ def serve(session: Path, *, browser: bool) -> None:
                 stderr=said,
                 start_new_session=True,
             )
+        signal.signal(signal.SIGTERM, _stop)  # else the server would outlive this process
         try:
             _wait(server, port, token, log)
             address = f"http://{_HOST}:{port}/?token={token}"
@@ -131,11 +132,15 @@ def _wait(server: subprocess.Popen, port: int, token: str, log: Path) -> None:
     raise LfptoolsError(f"the server of the bench did not answer within {_START_S:.0f} s")
 
 
+def _stop(_signal: int, _frame: object) -> None:
+    raise SystemExit(0)
+
+
 def end(server: subprocess.Popen) -> None:
-    """End the server and what it started: asked first, then its own process group killed."""
+    """End the server: asked first, so that it ends its kernels; then its process group killed."""
     if server.poll() is None:
         server.terminate()
         with suppress(subprocess.TimeoutExpired):
-            server.wait(timeout=5)
+            server.wait(timeout=15)
     with suppress(ProcessLookupError, PermissionError):
         os.killpg(server.pid, signal.SIGKILL)

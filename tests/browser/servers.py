@@ -51,7 +51,7 @@ def running(command, folder):
     finally:
         server.terminate()
         with suppress(subprocess.TimeoutExpired):
-            server.wait(timeout=5)
+            server.wait(timeout=20)
         with suppress(ProcessLookupError):
             os.killpg(server.pid, signal.SIGKILL)
 

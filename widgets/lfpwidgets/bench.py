@@ -66,6 +66,7 @@ class Bench:
         self._leaving = Leaving(self.state, self._scene)
         self._full: dict[str, Any] | None = None
         self._gripped = False
+        self._touched = False
         self._opened = self._on_disk()
         self.state.observe(self._changed)
 
@@ -98,6 +99,7 @@ class Bench:
     def _heard(self, message: dict[str, Any]) -> None:
         """Take a message of the browser; errors reach the user as a message."""
         try:
+            self._touched = self._touched or message.get("do") != "hello"
             if message.get("do") == "move":
                 self._newest.put(message)
             else:
@@ -149,7 +151,7 @@ class Bench:
 
     def _hello(self) -> None:
         """Greet a page; one whose kernel ran ahead of it may find other files by now."""
-        if not self.state.unsaved and self._on_disk() != self._opened:
+        if not self._touched and self._on_disk() != self._opened:
             self._open()
             self._redraw()
         self._answer()
