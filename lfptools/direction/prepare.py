@@ -4,6 +4,7 @@ from dataclasses import dataclass, replace
 from fractions import Fraction
 
 import numpy as np
+from scipy.interpolate import CubicSpline
 from scipy.ndimage import gaussian_filter1d
 from scipy.signal import resample_poly
 
@@ -58,17 +59,32 @@ def orders_for(n_samples: int, rate_hz: float, asked: int | None) -> tuple[int, 
 
 
 def to_rate(signals: Signals, rate_hz: float) -> Signals:
-    """Return the signal at `rate_hz`.
+    """Return the signal at `rate_hz`, on samples at whole multiples of 1 / rate_hz.
 
     A zero-phase FIR whose cut-off and length in s depend on `rate_hz` alone, so that all areas
-    pass through the same filter whatever rate they were recorded at.
+    pass through the same filter whatever rate they were recorded at. The grid is the same for
+    all areas too: what reaches both at once (a reference, a mixture) would look delayed if
+    their samples stood a fraction of a millisecond apart, and a delay is taken for a lead.
     """
+    aligned = _on_grid(signals, rate_hz)
     ratio = Fraction(rate_hz / signals.rate_hz).limit_denominator(10_000)
     slow = resample_poly(
-        signals.data.astype(float), ratio.numerator, ratio.denominator, axis=-1, padtype="line"
+        aligned.data.astype(float), ratio.numerator, ratio.denominator, axis=-1, padtype="line"
     )
-    time_s = signals.time_s[0] + np.arange(slow.shape[-1]) / rate_hz
-    return replace(signals, data=slow, time_s=time_s, rate_hz=rate_hz)
+    time_s = aligned.time_s[0] + np.arange(slow.shape[-1]) / rate_hz
+    return replace(aligned, data=slow, time_s=time_s, rate_hz=rate_hz)
+
+
+def _on_grid(signals: Signals, rate_hz: float) -> Signals:
+    """Shift the signal, by less than a sample, to start at a whole multiple of 1 / rate_hz."""
+    start = np.ceil(signals.time_s[0] * rate_hz - 1e-6) / rate_hz
+    n_times = int((signals.time_s[-1] - start) * signals.rate_hz + 1e-6) + 1
+    time_s = start + np.arange(n_times) / signals.rate_hz
+    at = (start - signals.time_s[0]) * signals.rate_hz
+    if abs(at - round(at)) < 1e-6:
+        return replace(signals, data=signals.data[..., round(at) :][..., :n_times], time_s=time_s)
+    spline = CubicSpline(signals.time_s, signals.data.astype(float), axis=-1)
+    return replace(signals, data=spline(time_s), time_s=time_s)
 
 
 def edge_s(rate_hz: float) -> float:
@@ -105,7 +121,7 @@ def stretch(
     n_samples = round((span_s[1] - span_s[0]) * rate_hz)
     parts, basis = [], [np.ones(n_samples), np.linspace(-1, 1, n_samples)]
     for signals in (first, second):
-        start = int(np.ceil((span_s[0] - signals.time_s[0]) * rate_hz - 1e-6))
+        start = round((span_s[0] - signals.time_s[0]) * rate_hz)  # one grid for all areas
         trials = signals.data[rows, 0]
         mean = trials.mean(axis=0)
         inside = slice(start, start + n_samples)
