@@ -353,8 +353,8 @@ function render({ model, el }) {
     return make("table", { class: old ? "lfp-grid lfp-old" : "lfp-grid" },
       make("caption", { textContent: caption }),
       make("thead", {}, make("tr", {}, ...head.map((name) => make("th", { textContent: name, scope: "col" })))),
-      make("tbody", {}, ...rows.map((cells) => make("tr", {}, ...cells.map((cell) =>
-        make("td", { class: typeof cell === "string" && cell.length > 34 ? "lfp-long" : "" }, cell))))));
+      make("tbody", {}, ...rows.map((cells) => make("tr", {}, ...cells.map((cell, i) =>
+        make("td", { class: head[i] === "note" || head[i] === "layer" ? "lfp-long" : "" }, cell))))));
   }
 
   function folded(cell, open) {

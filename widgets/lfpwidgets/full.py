@@ -71,7 +71,7 @@ def full_answer(
         )
     ]
     sinks: list[Row] = []
-    for area in prepared.csd:
+    for area in prepared.signals:
         if window.holds(area):
             progress("mapping the depth", 0.0)
             sinks += window_sinks(prepared, area, condition, window)

@@ -12,6 +12,7 @@ from itertools import combinations
 import numpy as np
 
 from lfptools.analysis.arrival import chosen_note, difference
+from lfptools.analysis.elsewhere import elsewhere
 from lfptools.analysis.prepared import Prepared
 from lfptools.analysis.results import note
 from lfptools.choices import WindowChoice
@@ -154,7 +155,9 @@ def _shown(prepared: Prepared, window: WindowChoice, area: str, wave: WaveEstima
         unit=signal.unit,
         extremum=window.extremum_in(area),
         found=values["p"] <= ALPHA,
-        note=note(wave.note[0], signal.note, chosen_note(window)),
+        note=note(
+            wave.note[0], signal.note, elsewhere(prepared, area, window), chosen_note(window)
+        ),
         **values,
     )
 

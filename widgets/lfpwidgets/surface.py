@@ -32,6 +32,9 @@ class Surface(anywidget.AnyWidget):
         super().__init__(**traits)
         self.on_msg(lambda _widget, content, _buffers: heard(content))
 
+    def __repr__(self) -> str:
+        return f"the bench on {self.scene.get('title', 'no session')}"
+
     def answer(self, answer: dict[str, Any], turn: int = 0) -> None:
         """Send answers; `turn` numbers the position of the hand that they belong to."""
         self.send({"kind": "answer", "turn": turn, "answer": answer}, [_UNHELD])
