@@ -99,10 +99,9 @@ def _table(caption: str, head: Sequence[str], rows: list[list[Any]]) -> Table:
     return {"caption": caption, "head": list(head), "rows": rows, "old": False}
 
 
-def _own_note(row: Row) -> str:
-    """Return a row's note without what the heading says already."""
-    parts = str(row.get("note", "")).split("; ")
-    return "; ".join(part for part in parts if part != CHOSEN_HERE)
+def _own(note: str) -> str:
+    """Return a note without what the heading says already."""
+    return "; ".join(part for part in note.split("; ") if part != CHOSEN_HERE)
 
 
 # Quick.
@@ -114,7 +113,7 @@ def _waves(answer: QuickAnswer) -> Table:
         time = with_interval(wave.time_s * 1000, wave.time_lo_s * 1000, wave.time_hi_s * 1000)
         onset = with_interval(wave.onset_s * 1000, wave.onset_lo_s * 1000, wave.onset_hi_s * 1000)
         height = with_interval(wave.amplitude, wave.amplitude_lo, wave.amplitude_hi, wave.unit)
-        rows.append([f"{wave.area} ({wave.extremum})", time, onset, height, wave.note])
+        rows.append([f"{wave.area} ({wave.extremum})", time, onset, height, _own(wave.note)])
     return _table(*_WAVES, rows)
 
 
@@ -179,7 +178,7 @@ def _wave_table(rows: Sequence[Row]) -> Table:
                 cell(row, "time_ms", "time_lo_ms", "time_hi_ms"),
                 cell(row, "onset_ms", "onset_lo_ms", "onset_hi_ms"),
                 cell(row, "amplitude", "amplitude_lo", "amplitude_hi", row["unit"]),
-                _own_note(row),
+                _own(str(row.get("note", ""))),
             ]
             for row in rows
         ],
@@ -221,7 +220,7 @@ def _sink_table(rows: Sequence[Row]) -> Table:
                 row["kind"],
                 cell(row, "depth_um", "depth_lo_um", "depth_hi_um"),
                 cell(row, "peak_ms", "peak_lo_ms", "peak_hi_ms"),
-                str(row.get("layer", "") or _own_note(row)),
+                str(row.get("layer", "")) or _own(str(row.get("note", ""))),
             ]
             for row in rows
         ],
