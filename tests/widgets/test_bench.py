@@ -4,6 +4,7 @@ import asyncio
 import json
 from dataclasses import replace
 
+import numpy as np
 import pytest
 
 from lfptools import analyse, open_session
@@ -278,3 +279,29 @@ def test_a_session_without_spikes_shows_the_time_axis(session_file):
 def test_the_still_picture_is_a_png(session_file):
     bench = Talk(session_file).bench
     assert bench._leaving.still().startswith(b"\x89PNG")
+
+
+def test_a_condition_with_few_trials_says_so(session_file):
+    events = session_file.parent / "events.csv"
+    header, *lines = events.read_text().splitlines()
+    kept = [line for line in lines if ",pad," in line]
+    kept += [line for line in lines if ",single," in line][:5]
+    events.write_text("\n".join([header, *kept]) + "\n")
+    talk = conversation(session_file, {"do": "show", "key": "condition", "value": "single"})
+    answer = talk.of("answer")[-1]["answer"]
+    assert answer["heading"].startswith("early, single: ")
+    notes = [row[-1] for row in answer["tables"][0]["rows"]]
+    assert notes == ["fewer than 8 accepted trials"] * 3
+    assert talk.of("error") == []
+
+
+def test_a_unit_without_spikes_is_shown_and_not_estimated(session_file):
+    cut = cut_trials(open_session(session_file))
+    silent = replace(cut.spikes, time_s=(np.array([]), *cut.spikes.time_s[1:]))
+    talk = conversation(replace(cut, spikes=silent), {"do": "hello"})
+    assert talk.of("error") == []
+    assert talk.scene["chosen"]["unit"] == cut.spikes.unit[0]
+    tables = {each["caption"]: each for each in talk.of("answer")[-1]["answer"]["tables"]}
+    units = tables["Units that rise or fall (q <= .05)"]["rows"][0][-1]["more"]
+    assert "(not estimated)" in units[0]
+    assert "spikes" in units[0]
