@@ -9,6 +9,7 @@ from dataclasses import replace
 
 import msgspec
 import numpy as np
+from threadpoolctl import ThreadpoolController
 
 from lfptools.analysis.basis import make_basis
 from lfptools.analysis.memo import Memo
@@ -23,6 +24,8 @@ from lfptools.trials import MIN_TRIALS
 from lfpwidgets.full import FullAnswer, full_answer
 from lfpwidgets.quick import N_DRAWS, QuickAnswer, quick_answer
 
+#: The products behind an answer are small: more BLAS threads get into one another's way.
+_BLAS = ThreadpoolController()
 #: Averages and maps kept in memory.
 _MOST_PICTURES = 64
 
@@ -83,8 +86,9 @@ class Answers:
         """
         self._known(condition)
         window = _in_hand(windows, hand)
-        prepared = self._prepared(self._choices(windows, signal))
-        return quick_answer(prepared, window, condition, n_draws=self._n_draws)
+        with _BLAS.limit(limits=1):
+            prepared = self._prepared(self._choices(windows, signal))
+            return quick_answer(prepared, window, condition, n_draws=self._n_draws)
 
     def full(
         self,
@@ -116,7 +120,8 @@ class Answers:
         """
         self._known(condition)
         window = _in_hand(tuple(choices.window), hand)
-        return full_answer(self._prepared(choices), window, condition, stop=stop)
+        with _BLAS.limit(limits=1):
+            return full_answer(self._prepared(choices), window, condition, stop=stop)
 
     def map(self, area: str, condition: str, signal: str, windows: Windows = ()) -> Average:
         """Return the average by depth and time, smoothed as in the figures of a run.

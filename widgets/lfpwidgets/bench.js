@@ -63,8 +63,10 @@ function render({ model, el }) {
     turn += 1;
     wanted = { do: "move", name, first: spans[name][0], last: spans[name][1], turn };
     root.dataset.wanted = turn;
-    send();
+    // The window is painted in its new place first; then the kernel is asked.
+    if (!painting) painting = requestAnimationFrame(() => { painting = 0; setTimeout(send, 0); });
   }
+  let painting = 0;
 
   let watchdog = null;
   function send() {
