@@ -96,8 +96,9 @@ class Search:
 
     @property
     def flank_span_s(self) -> tuple[float, float]:
-        """Span read for onsets: never before the stimulus."""
-        return max(0.0, self.span_s[0] - self.reach_s), self.span_s[1] + 0.002
+        """Span read for onsets: from after the stimulus, where the window lies there."""
+        first = self.span_s[0] - self.reach_s
+        return max(0.0, first) if self.span_s[0] >= 0 else first, self.span_s[1] + 0.002
 
     @property
     def prominence_span_s(self) -> tuple[float, float]:

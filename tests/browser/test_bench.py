@@ -77,7 +77,7 @@ def table(page, caption):
         """(caption) => {
           const all = [...document.querySelectorAll('.lfp-answers table')];
           const found = all.find((t) => t.caption.textContent.startsWith(caption));
-          return found ? [...found.tBodies[0].rows].map((r) =>
+          return found ? [...found.tBodies[0].rows].filter((r) => r.className !== 'lfp-note').map((r) =>
             [...r.cells].map((c) => c.querySelector('summary')?.textContent ?? c.textContent)) : [];
         }""",
         caption,
@@ -110,7 +110,7 @@ def same_answers(page, view, rows, window="early"):
     ]
     assert [line[:3] for line in table(page, "When the wave arrives")] == [
         [
-            f"{row['area']} ({row['extremum']})",
+            f"{row['area']} ({row['signal']} {row['depth_um']:g} um)",
             cell(row, "time_ms", "time_lo_ms", "time_hi_ms"),
             cell(row, "onset_ms", "onset_lo_ms", "onset_hi_ms"),
         ]

@@ -137,3 +137,12 @@ def test_an_unknown_landmark_is_refused():
         Search((0.1, 0.2), "valley", "half")
     with pytest.raises(InputError, match="onset is 'tenth'"):
         Search((0.1, 0.2), "trough", "tenth")
+
+
+@pytest.mark.parametrize("span_s", [(-0.15, -0.05), (-0.02, 0.05)])
+def test_a_window_before_the_stimulus_is_measured_like_any_other(span_s):
+    rng = np.random.default_rng(1)
+    data = 3 * bump(at_s=sum(span_s) / 2, sd_s=0.008)[None, None]
+    found = measured(data + rng.normal(size=(30, 1, len(TIME))), Search(span_s, "trough", "half"))
+    assert found.p[0] <= 0.05
+    assert found.time_s[0] == pytest.approx(sum(span_s) / 2, abs=0.012)

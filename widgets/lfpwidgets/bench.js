@@ -35,8 +35,10 @@ function render({ model, el }) {
   stack.append(pictures, marks, windows);
   const table = make("div", { class: "lfp-window-table" });
   const answers = make("div", { class: "lfp-answers", ariaBusy: "false" });
-  const side = make("div", { class: "lfp-side" }, controls, table, answers);
-  root.append(alarm, make("div", { class: "lfp-main" }, stack, side), status);
+  // Beside the controls, where the eye is: what was done, and what went wrong.
+  const said = make("div", { class: "lfp-said" }, alarm, status);
+  const side = make("div", { class: "lfp-side" }, controls, said, table, answers);
+  root.append(make("div", { class: "lfp-main" }, stack, side));
 
   let scene = model.get("scene");
   let spans = {};       // name -> [first, last] as the hand has them, ms
@@ -49,9 +51,16 @@ function render({ model, el }) {
   // --- to the kernel ------------------------------------------------------------------------
   function tell(message) {
     alarm.textContent = "";
+    status.textContent = "";
     if (model.comm_live === false) return lost();
     model.send(message);
+    // Whatever is asked, something comes back soon; silence means that nobody is there.
+    if (!["take", "grip", "hello"].includes(message.do)) {
+      clearTimeout(silence);
+      silence = setTimeout(lost, 8000);
+    }
   }
+  let silence = null;
 
   function lost() {
     alarm.textContent =
@@ -161,6 +170,14 @@ function render({ model, el }) {
     if (rest === null) tell({ do: "grip", name });
     clearTimeout(rest);
     rest = null;
+    inHand(name);
+  }
+
+  function inHand(name) {
+    scene.hand = name;
+    for (const box of windows.children) box.classList.toggle("lfp-in-hand", box.dataset.window === name);
+    const radio = table.querySelector(`[data-window="${CSS.escape(name)}"] input[type=radio]`);
+    if (radio) radio.checked = true;
   }
 
   function letGo() {
@@ -179,6 +196,7 @@ function render({ model, el }) {
     event.currentTarget.focus();
     held = { name, edge, from: msAt(event.clientX), first: spans[name][0], last: spans[name][1] };
     tell({ do: "grip", name });
+    inHand(name);
     window.addEventListener("mousemove", follow);
     window.addEventListener("mouseup", release, { once: true });
   }
@@ -352,11 +370,19 @@ function render({ model, el }) {
 
   // --- answers ------------------------------------------------------------------------------------
   function answerTable({ caption, head, rows, old }) {
+    // Notes weaken numbers: they stand below their row, where they cannot be cut off.
+    const noted = head[head.length - 1] === "note";
+    const columns = noted ? head.slice(0, -1) : head;
+    const body = rows.flatMap((cells) => {
+      const own = make("tr", {}, ...cells.slice(0, columns.length).map((cell) => make("td", {}, cell)));
+      if (!noted || !cells[columns.length]) return [own];
+      const note = make("td", { colSpan: columns.length, textContent: cells[columns.length] });
+      return [own, make("tr", { class: "lfp-note" }, note)];
+    });
     return make("table", { class: old ? "lfp-grid lfp-old" : "lfp-grid" },
       make("caption", { textContent: caption }),
-      make("thead", {}, make("tr", {}, ...head.map((name) => make("th", { textContent: name, scope: "col" })))),
-      make("tbody", {}, ...rows.map((cells) => make("tr", {}, ...cells.map((cell, i) =>
-        make("td", { class: head[i] === "note" || head[i] === "layer" ? "lfp-long" : "" }, cell))))));
+      make("thead", {}, make("tr", {}, ...columns.map((name) => make("th", { textContent: name, scope: "col" })))),
+      make("tbody", {}, ...body));
   }
 
   function folded(cell, open) {
@@ -379,6 +405,7 @@ function render({ model, el }) {
   }
 
   function take(message) {
+    clearTimeout(silence);
     if (message.kind === "answer") {
       if (message.turn) {
         flying = false;

@@ -56,7 +56,10 @@ class Bench:
 
     def _open(self) -> None:
         """Open the session and whatever was kept of it, as it is now."""
-        cut, path = _cut(self._session)
+        path = _path_of(self._session)
+        # Looked at before it is opened: what is saved meanwhile is noticed by the next page.
+        self._opened = _on_disk(path)
+        cut = _cut(self._session)
         if not cut.areas:
             raise InputError("the session holds no LFP; the bench shows averages of the field")
         self.state = BenchState(cut, path=path)
@@ -67,16 +70,7 @@ class Bench:
         self._full: dict[str, Any] | None = None
         self._gripped = False
         self._touched = False
-        self._opened = self._on_disk()
         self.state.observe(self._changed)
-
-    def _on_disk(self) -> tuple[bytes, bytes]:
-        """Return the session file and what is kept beside it, as they are on disk."""
-        path = self.state.path
-        if path is None:
-            return b"", b""
-        kept = keepsake_path(path)
-        return path.read_bytes(), kept.read_bytes() if kept.exists() else b""
 
     @property
     def value(self) -> View:
@@ -151,7 +145,7 @@ class Bench:
 
     def _hello(self) -> None:
         """Greet a page; one whose kernel ran ahead of it may find other files by now."""
-        if not self._touched and self._on_disk() != self._opened:
+        if not self._touched and _on_disk(self.state.path) != self._opened:
             self._open()
             self._redraw()
         self._answer()
@@ -176,6 +170,7 @@ class Bench:
             ) from None
         edges = (value, last) if message["edge"] == "first" else (first, value)
         self.state.move(window.name, *edges)
+        self.state.take(window.name)
 
     def _show(self, key: str, value: str) -> None:
         if key == "unit":
@@ -237,9 +232,22 @@ class Bench:
         self.surface.complain(f"{kind}{error}")
 
 
-def _cut(session: str | Path | Session | CutSession) -> tuple[CutSession, Path | None]:
+def _path_of(session: str | Path | Session | CutSession) -> Path | None:
+    """Return the session file that the session comes from, where there is one."""
+    if isinstance(session, str | Path):
+        return Path(session)
+    return next(iter(session.files), None) if isinstance(session, Session) else None
+
+
+def _cut(session: str | Path | Session | CutSession) -> CutSession:
     if isinstance(session, CutSession):
-        return session, None
-    path = Path(session) if isinstance(session, str | Path) else None
-    opened = session if isinstance(session, Session) else open_session(session)
-    return cached_cut(opened), path or next(iter(opened.files), None)
+        return session
+    return cached_cut(session if isinstance(session, Session) else open_session(session))
+
+
+def _on_disk(path: Path | None) -> tuple[bytes, bytes]:
+    """Return the session file and what is kept beside it, as they are on disk."""
+    if path is None or not path.exists():
+        return b"", b""
+    kept = keepsake_path(path)
+    return path.read_bytes(), kept.read_bytes() if kept.exists() else b""

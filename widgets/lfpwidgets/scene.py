@@ -66,7 +66,7 @@ class Scene:
         """Return the averages of the signal that stands for each area, by condition."""
         view = self._state.view
         return [
-            self._answers.average(area.area, name, view.signal)
+            self._answers.average(area.area, name, view.signal, view.windows)
             for area in self._state.cut.areas
             for name in self._conditions
         ]
@@ -90,7 +90,7 @@ class Scene:
                 "right": RIGHT_PX,
                 "span": list(self.span_ms),
                 "step": state.step_ms,
-                "bounds": list(state.grid.ends_ms),
+                "bounds": [max(state.grid.ends_ms[0], self.span_ms[0]), state.grid.ends_ms[1]],
             },
             "windows": [
                 {
@@ -126,10 +126,12 @@ class Scene:
 
     def _all_strips(self) -> dict[str, Strip]:
         view = self._state.view
+        averages = self.averages()
+        contacts = tuple(float(each.depth_um[0]) for each in averages)
         strips = {
             "averages_png": self._strips.get(
-                ("averages", view.signal),
-                lambda: averages_strip(self.averages(), self.span_ms, self._conditions),
+                ("averages", view.signal, contacts),
+                lambda: averages_strip(averages, self.span_ms, self._conditions),
             )
         }
         shown = view.condition if view.condition in self._conditions else self._conditions[0]

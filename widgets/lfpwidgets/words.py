@@ -55,7 +55,7 @@ def full_words(answer: FullAnswer, window: WindowChoice, n_trials: int) -> Table
     tables = [_wave_table(answer.latencies)] if answer.latencies else []
     tables += [_lag_table(answer.lags)] if answer.lags else []
     calls = [_call_table(answer.firing)] if answer.firing else []
-    said = "as `lfptools run` gives them for the saved session"
+    said = "as `lfptools run` gives them for these windows"
     return _answer(
         answer, window, tables + slow[:1] + calls + slow[1:], said, stale=False, n_trials=n_trials
     ) | {
@@ -84,8 +84,10 @@ def _answer(
 ) -> Table:
     chosen = _CHOSEN if window.chosen != "before" else ""
     count = answer.n_trials if n_trials is None else n_trials
+    first, last = (1000 * edge for edge in window.direction_span_s)
+    direction = f" · direction over {first:g} to {last:g} ms"
     return {
-        "heading": f"{answer.window}, {answer.condition}: {count} trials{chosen}",
+        "heading": f"{answer.window}, {answer.condition}: {count} trials{direction}{chosen}",
         "pending": pending,
         "stale": stale,
         "tables": tables,
@@ -97,6 +99,11 @@ def _table(caption: str, head: Sequence[str], rows: list[list[Any]]) -> Table:
     if head[-1] == "note" and not any(row[-1] for row in rows):
         head, rows = head[:-1], [row[:-1] for row in rows]
     return {"caption": caption, "head": list(head), "rows": rows, "old": False}
+
+
+def _named(area: str, signal: str) -> str:
+    """Return an area with the signal that stands for it: the contact may change with windows."""
+    return f"{area} ({signal})"
 
 
 def _own(note: str) -> str:
@@ -113,7 +120,7 @@ def _waves(answer: QuickAnswer) -> Table:
         time = with_interval(wave.time_s * 1000, wave.time_lo_s * 1000, wave.time_hi_s * 1000)
         onset = with_interval(wave.onset_s * 1000, wave.onset_lo_s * 1000, wave.onset_hi_s * 1000)
         height = with_interval(wave.amplitude, wave.amplitude_lo, wave.amplitude_hi, wave.unit)
-        rows.append([f"{wave.area} ({wave.extremum})", time, onset, height, _own(wave.note)])
+        rows.append([_named(wave.area, wave.signal), time, onset, height, _own(wave.note)])
     return _table(*_WAVES, rows)
 
 
@@ -174,7 +181,7 @@ def _wave_table(rows: Sequence[Row]) -> Table:
         *_WAVES,
         [
             [
-                f"{row['area']} ({row['extremum']})",
+                _named(row["area"], f"{row['signal']} {row['depth_um']:g} um"),
                 cell(row, "time_ms", "time_lo_ms", "time_hi_ms"),
                 cell(row, "onset_ms", "onset_lo_ms", "onset_hi_ms"),
                 cell(row, "amplitude", "amplitude_lo", "amplitude_hi", row["unit"]),
@@ -229,7 +236,7 @@ def _sink_table(rows: Sequence[Row]) -> Table:
 
 def _verdict_table(rows: Sequence[Row]) -> Table:
     return _table(
-        "Which area leads",
+        "Which area leads (net Granger causality minus that of reversed time)",
         ("areas", "verdict", "net (positive: first leads)", "q"),
         [
             [
