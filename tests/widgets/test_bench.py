@@ -12,6 +12,8 @@ from lfptools.errors import InputError
 from lfptools.trials import cut_trials
 from lfpwidgets.bench import Bench
 from lfpwidgets.keepsake import keepsake_path
+from lfpwidgets.quick import QuickAnswer
+from lfpwidgets.snap import around_waves
 from tests.loops import run
 
 pytestmark = pytest.mark.filterwarnings("ignore::DeprecationWarning")
@@ -90,7 +92,8 @@ def test_hello_is_answered_quickly_then_fully(session_file):
     assert [each["stale"] for each in answers] == [True, False]
     captions = [table["caption"] for table in answers[-1]["tables"]]
     assert captions == [
-        "When the wave arrives (ms)", "Lags (ms)", "Which area leads",
+        "When the wave arrives (ms)", "Lags (ms)",
+        "Which area leads (net Granger causality minus that of reversed time)",
         "Units that rise or fall (q <= .05)", "Strongest sink and source",
     ]  # fmt: skip
     json.dumps(answers, allow_nan=False)
@@ -213,18 +216,16 @@ def test_what_was_kept_for_another_file_or_is_broken_is_left_alone(session_file)
     assert Talk(session_file).spans()["early"] == [5, 40]
 
 
-def test_snap_holds_the_waves_and_says_where_there_is_none(session_file):
+def test_snap_holds_the_waves(session_file):
     talk = conversation(session_file, {"do": "snap"})
     first, last = talk.spans()["early"]
     assert first < 13
     assert last > 25
-    quiet = ({"do": "add"}, {"do": "type", "name": "window 3", "edge": "first", "value": "260"})
-    talk = conversation(session_file, quiet)
-    run(talk.tell({"do": "snap"}, wait=False))
-    if talk.of("error"):
-        assert "no wave was found" in talk.of("error")[0]["text"]
-    else:
-        assert talk.spans()["window 3"][0] >= 0
+
+
+def test_snap_without_a_wave_is_refused_in_words():
+    with pytest.raises(InputError, match="no wave was found in window 'quiet'"):
+        around_waves(QuickAnswer("quiet", "single", 20, 400), (-200.0, 300.0))
 
 
 def test_tables_and_figures_are_left_behind(session_file):
