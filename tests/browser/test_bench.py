@@ -77,8 +77,9 @@ def table(page, caption):
         """(caption) => {
           const all = [...document.querySelectorAll('.lfp-answers table')];
           const found = all.find((t) => t.caption.textContent.startsWith(caption));
-          return found ? [...found.tBodies[0].rows].filter((r) => r.className !== 'lfp-note').map((r) =>
-            [...r.cells].map((c) => c.querySelector('summary')?.textContent ?? c.textContent)) : [];
+          const rows = found ? [...found.tBodies[0].rows] : [];
+          return rows.filter((r) => r.className !== 'lfp-note').map((r) =>
+            [...r.cells].map((c) => c.querySelector('summary')?.textContent ?? c.textContent));
         }""",
         caption,
     )
