@@ -20,22 +20,6 @@ def positive(name: str, value: float, unit: str = "") -> float:
     return float(value)
 
 
-def in_range(name: str, value: float, low: float, high: float, unit: str = "") -> float:
-    """Return `value`, which must lie strictly between `low` and `high`.
-
-    Raises
-    ------
-    InputError
-        If it does not.
-    """
-    if not low < value < high:
-        raise InputError(
-            f"{name} is {value:g} {unit}".rstrip()
-            + f"; it must lie between {low:g} and {high:g} {unit}".rstrip()
-        )
-    return float(value)
-
-
 def span(name: str, value: Sequence[float], unit: str = "") -> tuple[float, float]:
     """Return a span (first, last), which must hold two finite numbers in rising order.
 
@@ -50,28 +34,6 @@ def span(name: str, value: Sequence[float], unit: str = "") -> tuple[float, floa
             "with first below last"
         )
     return float(value[0]), float(value[1])
-
-
-def span_inside(
-    name: str,
-    inner: tuple[float, float],
-    outer_name: str,
-    outer: tuple[float, float],
-    unit: str = "",
-) -> tuple[float, float]:
-    """Return `inner`, which must lie inside `outer` (edges included).
-
-    Raises
-    ------
-    InputError
-        If it reaches outside.
-    """
-    if inner[0] < outer[0] or inner[1] > outer[1]:
-        raise InputError(
-            f"{name} is [{inner[0]:g}, {inner[1]:g}] {unit}".rstrip()
-            + f"; it must lie inside {outer_name}, [{outer[0]:g}, {outer[1]:g}] {unit}".rstrip()
-        )
-    return inner
 
 
 def array(name: str, value: object, shape: tuple[int | None, ...]) -> np.ndarray:

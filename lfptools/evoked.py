@@ -122,33 +122,6 @@ def _kernel(sd_samples: float) -> np.ndarray:
     return plain - 0.5 * sd_samples**2 * curved
 
 
-def least_risk_smoothing(
-    signals: list[Signals], condition: np.ndarray, names: list[str], span_s: tuple[float, float]
-) -> float:
-    """Choose one smoothing SD (s) for all signals and conditions that will be compared.
-
-    For each average m of N trials the estimated risk of smoothing with a plain Gaussian S is
-    |m - S m|^2 + 2 tr(S Sigma) / N, with Sigma from the autocovariance of the trials'
-    residuals, so that 1/f noise is not taken for signal. Risks are divided by the noise power
-    of their average and summed. Because the extremum of a smoothed average needs a little more
-    than its mean square, the next larger SD of the grid is taken.
-
-    Parameters
-    ----------
-    signals : list of Signals
-        One signal each, the ones that stand for their areas.
-    condition : ndarray of str, shape (n_trials,)
-        Condition of each trial.
-    names : list of str
-        Conditions that are estimated.
-    span_s : (float, float)
-        Where the waves are looked for.
-    """
-    return least_risk(
-        [smoothing_risk(each, condition == name) for each in signals for name in names], span_s
-    )
-
-
 @dataclass(frozen=True, slots=True, eq=False)
 class SmoothingRisk:
     """What smoothing one average with each SD of the grid costs and what noise it leaves."""
@@ -160,7 +133,19 @@ class SmoothingRisk:
 
 
 def least_risk(risks: list[SmoothingRisk], span_s: tuple[float, float]) -> float:
-    """Return the SD (s) of least summed risk over a span, one step further on the grid."""
+    """Choose one smoothing SD (s) for all averages that will be compared.
+
+    Risks are divided by the noise power of their average and summed. Because the extremum of a
+    smoothed average needs a little more than its mean square, the next larger SD of the grid
+    is taken.
+
+    Parameters
+    ----------
+    risks : list of SmoothingRisk
+        One for each signal that stands for an area, and condition.
+    span_s : (float, float)
+        Where the waves are looked for.
+    """
     total = np.zeros(len(SMOOTHING_GRID_MS))
     for each in risks:
         misfit = each.misfit[:, window_mask(each.time_s, span_s)].mean(axis=1)
@@ -170,7 +155,11 @@ def least_risk(risks: list[SmoothingRisk], span_s: tuple[float, float]) -> float
 
 
 def smoothing_risk(signals: Signals, rows: np.ndarray) -> SmoothingRisk:
-    """Return the parts of the risk that no window changes.
+    """Return the parts of the risk of smoothing an average that no window changes.
+
+    The estimated risk of smoothing an average m of N trials with a plain Gaussian S is
+    |m - S m|^2 + 2 tr(S Sigma) / N, with Sigma from the autocovariance of the trials'
+    residuals, so that 1/f noise is not taken for signal.
 
     Parameters
     ----------

@@ -189,19 +189,6 @@ def strongest(found: Candidates, mean: np.ndarray, spans_s: list[tuple[float, fl
     return int(np.argmax(np.where(found.usable, strength, -np.inf)))
 
 
-def area_signal(
-    trials: Trials,
-    csd: Signals | None,
-    *,
-    kind: str,
-    conditions: list[np.ndarray],
-    spans_s: list[tuple[float, float]],
-) -> Signals:
-    """Return the one signal that stands for an area in lags and direction."""
-    found = candidates(trials, csd, kind)
-    return chosen(found, strongest(found, grand_mean(found.signals, conditions), spans_s))
-
-
 def chosen(found: Candidates, index: int) -> Signals:
     """Return one of the candidates, in a block of memory of its own."""
     signals, place = found.signals, slice(index, index + 1)

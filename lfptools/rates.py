@@ -21,7 +21,6 @@ from lfptools.rate_change import (
     Counts,
     SpikeTable,
     count_spikes,
-    spike_table,
     stimuli_of,
     tested_changes,
 )
@@ -34,37 +33,6 @@ MAX_Q = 0.05
 ENOUGH_DEFINED = 0.95
 #: Bins of a curve to look at are at least this wide.
 CURVE_BIN_MS = 5.0
-
-
-def firing_rows(
-    cut: CutSession, *, weights: Mapping[str, np.ndarray], signs: Mapping[str, np.ndarray]
-) -> list[dict]:
-    """Return one row a unit, condition and window, with the columns of firing.csv.
-
-    `session` and `q` are the caller's; `call` stays empty until `finish_calls`, which also
-    folds `latency_note` into `note`.
-
-    Parameters
-    ----------
-    cut : CutSession
-        The session, cut into trials. Its depths are in um, its spike times in s.
-    weights, signs : mapping of str to ndarray
-        Bootstrap weights (n_draws, n_trials of the condition), each row sums to 1, and random
-        signs (n_flips + 1, n_trials), the first row all +1, of each condition.
-
-    Raises
-    ------
-    InputError
-        If the weights of a condition are missing or do not fit its trials, or spike times do
-        not rise.
-    """
-    parts = []
-    for number, condition in enumerate(cut.table.conditions):
-        table = spike_table(cut, condition)
-        for place, window in enumerate(cut.choices.window):
-            rows = window_rows(cut, table, condition, window, weights=weights, signs=signs)
-            parts.append((number, place, rows))
-    return in_order(parts)
 
 
 def in_order(parts: list[tuple[int, int, dict[int, dict]]]) -> list[dict]:
@@ -92,9 +60,29 @@ def window_rows(
     weights: Mapping[str, np.ndarray],
     signs: Mapping[str, np.ndarray],
 ) -> dict[int, dict]:
-    """Return the rows of one window and condition, by number of the unit.
+    """Return the rows of firing.csv of one window and condition, by number of the unit.
 
-    `table` is the `spike_table` of the condition; see `firing_rows` for the rest.
+    `session` and `q` are the caller's; `call` stays empty until `finish_calls`, which also
+    folds `latency_note` into `note`.
+
+    Parameters
+    ----------
+    cut : CutSession
+        The session, cut into trials. Its depths are in um, its spike times in s.
+    table : SpikeTable
+        `spike_table` of the condition.
+    condition : str
+        Its name.
+    window : WindowChoice
+        The window.
+    weights, signs : mapping of str to ndarray
+        Bootstrap weights (n_draws, n_trials of the condition), each row sums to 1, and random
+        signs (n_flips + 1, n_trials), the first row all +1, of each condition.
+
+    Raises
+    ------
+    InputError
+        If the weights or signs of the condition are missing or do not fit its trials.
     """
     counts = count_spikes(table, window)
     rows = [_empty_row(cut, counts, place, condition, window) for place in range(len(counts.unit))]

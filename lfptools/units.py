@@ -6,7 +6,6 @@ positive), uA/mm^3 for current source density (sinks negative), Hz for rates.
 
 MS_PER_S = 1000.0
 UV_PER_V = 1e6
-UM_PER_MM = 1000.0
 #: 1 uA/mm^3 is 1000 A/m^3 (check: 1 mV/mm^2 x .3 S/m = 300 A/m^3 = .3 uA/mm^3).
 A_M3_PER_UA_MM3 = 1000.0
 

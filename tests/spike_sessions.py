@@ -11,6 +11,8 @@ from lfptools.choices import (
     WindowChoice,
 )
 from lfptools.model import Contacts, CutSession, SpikeTrains, Trials, TrialTable
+from lfptools.rate_change import spike_table
+from lfptools.rates import in_order, window_rows
 
 
 def choices(
@@ -89,3 +91,14 @@ def session(
         choices=chosen,
         spikes=spikes,
     )
+
+
+def unfinished_rows(cut, *, weights, signs):
+    """Rows of firing.csv before q and calls: every condition and window, in order."""
+    parts = [
+        (number, place, window_rows(cut, table, name, window, weights=weights, signs=signs))
+        for number, name in enumerate(cut.table.conditions)
+        for table in [spike_table(cut, name)]
+        for place, window in enumerate(cut.choices.window)
+    ]
+    return in_order(parts)

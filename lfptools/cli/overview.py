@@ -8,7 +8,7 @@ from rich.markup import escape
 from rich.table import Table
 
 from lfptools.clean import find_bad_contacts
-from lfptools.cli.doubts import doubts, unit_rates_hz
+from lfptools.cli.doubts import doubts, recordings_of, unit_rates_hz
 from lfptools.io.formats import FORMATS
 from lfptools.io.opening import open_session
 from lfptools.layers import given_contact
@@ -25,7 +25,8 @@ def show_overview(path: Path) -> None:
     """Print what a session file opens: sources, areas, units, events, bad contacts, memory."""
     session = open_session(path)
     console = Console()
-    console.print(f"session {session.name}" + (f", {session.subject}" if session.subject else ""))
+    subject = f", {session.subject}" if session.subject else ""
+    console.print(f"session {session.name}{subject}", markup=False)
     for table in (_sources(session), _areas(session), _units(session), _events(session)):
         if table.row_count:
             console.print(table)
@@ -50,17 +51,22 @@ def show_formats() -> None:
     """Print the recording formats, what each carries and what the user must add."""
     table = Table("format", "what", "carries", escape("needs in [[source]]"))
     for each in FORMATS.values():
-        table.add_row(each.name, each.what, ", ".join(each.carries), ", ".join(each.needs) or "-")
+        _row(table, each.name, each.what, ", ".join(each.carries), ", ".join(each.needs) or "-")
     Console().print(table)
+
+
+def _row(table: Table, *cells: str) -> None:
+    """Add a row of texts: a name from a file is shown as it is, never read as markup."""
+    table.add_row(*map(escape, cells))
 
 
 def _sources(session: Session) -> Table:
     table = Table("source", "clock", "rate", "channels", "duration", "runs", "amplifier")
-    seen = {area.recording.source: area.recording for area in session.areas if area.recording}
-    for name, recording in seen.items():
+    for recording in recordings_of(session):
         corners = recording.amplifier_hz
-        table.add_row(
-            name,
+        _row(
+            table,
+            recording.source,
             recording.clock,
             f"{recording.rate_hz:g} Hz",
             str(recording.n_channels),
@@ -75,12 +81,13 @@ def _areas(session: Session) -> Table:
     table = Table("area", "contacts", "depths", "median SD", "bad contacts")
     for area in session.areas:
         if area.contacts is None:
-            table.add_row(area.name, "no LFP", "-", "-", "-")
+            _row(table, area.name, "no LFP", "-", "-", "-")
             continue
         depth = area.contacts.depth_um
         contacts, sd_uv = look_at(session, area)
         _need_signal(session, area, contacts)
-        table.add_row(
+        _row(
+            table,
             area.name,
             str(len(contacts)),
             f"{depth[0]:g} to {depth[-1]:g} um",
@@ -144,7 +151,8 @@ def _units(session: Session) -> Table:
     for area in dict.fromkeys(spikes.area):
         mine = np.array([where == area for where in spikes.area])
         n_spikes = sum(len(spikes.time_s[unit]) for unit in np.flatnonzero(mine))
-        table.add_row(
+        _row(
+            table,
             area,
             str(mine.sum()),
             str(n_spikes),
@@ -178,7 +186,5 @@ def _events(session: Session) -> Table:
         rows = condition == name
         times = session.events.time_s[rows]
         out = int(np.count_nonzero(dropped[rows])) if dropped is not None else 0
-        table.add_row(
-            name, str(len(times)), str(out), f"{times.min():.3f} s", f"{times.max():.3f} s"
-        )
+        _row(table, name, str(len(times)), str(out), f"{times.min():.3f} s", f"{times.max():.3f} s")
     return table

@@ -5,13 +5,12 @@ from contextlib import contextmanager
 from typing import Any
 
 import numpy as np
-from matplotlib import rc_context
 from matplotlib.artist import Artist
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 from matplotlib.patches import Patch
 
-from lfptools.plot.style import INK, SETTINGS, WIDTH_IN, Look, short
+from lfptools.plot.style import INK, WIDTH_IN, Look, drawing, short
 
 #: More panels side by side than this could not be read.
 MOST_COLUMNS = 3
@@ -24,7 +23,7 @@ _HANDLE_LETTERS = 9
 @contextmanager
 def page_figure(height_in: float) -> Iterator[Figure]:
     """Yield a figure as wide as the page; what is drawn inside has the sizes of `style`."""
-    with rc_context(SETTINGS):
+    with drawing():
         figure = Figure(figsize=(WIDTH_IN, height_in))
         figure.set_layout_engine("constrained", w_pad=0.1, h_pad=0.05)
         yield figure

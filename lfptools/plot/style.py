@@ -3,8 +3,13 @@
 Every condition is told by three cues: colour, line style and marker.
 """
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager
 from dataclasses import dataclass
+from threading import RLock
+from typing import Any
+
+from matplotlib import rc_context
 
 #: The colours of Okabe and Ito (2008), Color Universal Design, which readers with the common
 #: kinds of colour blindness tell apart; from memory.
@@ -25,7 +30,7 @@ TEXT_PT = 8.0
 WIDTH_IN = 7.0
 DPI = 180
 
-#: Settings for matplotlib.rc_context. Names are shown as they are, never read as mathematics.
+#: Settings for `drawing`. Names are shown as they are, never read as mathematics.
 SETTINGS = {
     "font.size": TEXT_PT,
     "axes.titlesize": TEXT_PT + 1,
@@ -44,6 +49,19 @@ SETTINGS = {
     "text.parse_math": False,
     "axes.unicode_minus": True,
 }
+
+_DRAWING = RLock()
+
+
+@contextmanager
+def drawing(settings: Mapping[str, Any] = SETTINGS) -> Iterator[None]:
+    """Draw or save with these settings, one thread at a time.
+
+    matplotlib's settings belong to the whole process: two threads that change and restore them
+    by turns would leave one's settings behind for the user's own figures.
+    """
+    with _DRAWING, rc_context(dict(settings)):
+        yield
 
 
 @dataclass(frozen=True, slots=True)

@@ -150,3 +150,14 @@ def test_help_names_every_command_and_the_cautions():
     )
     for part in ("demo", "check", "run", "formats", "no medical device"):
         assert part in done.stdout
+
+
+def test_names_in_brackets_are_shown_by_check_as_they_are(own_session, capsys):
+    path = own_session / "session.toml"
+    path.write_text(path.read_text().replace('"whisker-demo"', '"[/red] whisker"'))
+    events = own_session / "events.csv"
+    events.write_text(events.read_text().replace(",pad,", ",[bold]pad,"))
+    assert main(["check", str(path)]) == 0
+    said = capsys.readouterr().out
+    assert "[/red] whisker" in said
+    assert "[bold]pad" in said

@@ -17,7 +17,7 @@ from lfptools.choices import CouplingChoice
 from lfptools.firing_latency import critical_counts, poisson_latency
 from lfptools.model import CutSession
 from lfptools.spikes import binned_counts
-from tests.spike_sessions import choices, lfp, session, stimuli_s, trains
+from tests.spike_sessions import choices, lfp, session, stimuli_s, trains, unfinished_rows
 
 NEURO = Path(__file__).parent / "data" / "boot_neuro.csv"
 
@@ -36,7 +36,7 @@ def neuro_rows(cut: CutSession) -> dict[str, dict]:
     rng = np.random.default_rng(1)
     weights = {"stimulus": resample.bootstrap_weights(469, 499, rng)}
     signs = {"stimulus": resample.sign_flips(469, cut.choices.resample.n, rng)}
-    rows = rates.firing_rows(cut, weights=weights, signs=signs)
+    rows = unfinished_rows(cut, weights=weights, signs=signs)
     q = resample.false_discovery_rate(np.array([row["p"] for row in rows]))
     finished = rates.finish_calls(
         [row | {"q": each} for row, each in zip(rows, q.tolist(), strict=True)]

@@ -5,8 +5,16 @@ import pytest
 
 from lfptools.csd import csd_operator, csd_signals
 from lfptools.errors import InputError
-from lfptools.evoked import SMOOTHING_GRID_MS, average, least_risk_smoothing, smooth
-from lfptools.layers import area_signal, layer_at, measure_sinks, usable_contacts
+from lfptools.evoked import SMOOTHING_GRID_MS, average, least_risk, smooth, smoothing_risk
+from lfptools.layers import (
+    candidates,
+    chosen,
+    grand_mean,
+    layer_at,
+    measure_sinks,
+    strongest,
+    usable_contacts,
+)
 from lfptools.model import Contacts, Signals, Trials
 from lfptools.resample import bootstrap_weights, sign_flips
 from lfptools.waves import Search
@@ -97,10 +105,16 @@ def trials(bad=(), n_contacts=12):
 ROWS = [np.ones(30, bool)]
 
 
+def area_signal(cut, csd, kind):
+    """The signal that stands for the area, with one window over the wave."""
+    found = candidates(cut, csd, kind)
+    return chosen(found, strongest(found, grand_mean(found.signals, ROWS), [(0.01, 0.06)]))
+
+
 def test_an_area_is_represented_by_the_current_at_its_strongest_sink():
     cut = trials(bad=[8])
     csd = csd_signals(cut, csd_operator(cut.contacts, conductivity_s_m=0.3))
-    found = area_signal(cut, csd, kind="csd", conditions=ROWS, spans_s=[(0.01, 0.06)])
+    found = area_signal(cut, csd, "csd")
     assert found.kind == "csd"
     assert found.unit == "uA/mm^3"
     assert found.depth_um.tolist() == [500.0]
@@ -109,14 +123,14 @@ def test_an_area_is_represented_by_the_current_at_its_strongest_sink():
 
 def test_few_contacts_fall_back_to_the_potential_and_say_so():
     cut = trials(n_contacts=4)
-    found = area_signal(cut, None, kind="csd", conditions=ROWS, spans_s=[(0.01, 0.06)])
+    found = area_signal(cut, None, "csd")
     assert found.kind == "lfp"
     assert found.unit == "uV"
     assert found.note == "fewer than 5 good contacts; volume conduction not excluded"
 
 
 def test_the_potential_on_request_carries_the_same_warning():
-    found = area_signal(trials(), None, kind="lfp", conditions=ROWS, spans_s=[(0.01, 0.06)])
+    found = area_signal(trials(), None, "lfp")
     assert found.depth_um.tolist() == [500.0]
     assert found.note == "volume conduction not excluded"
 
@@ -144,7 +158,7 @@ CONDITION = np.array(["single"] * 50)
 
 def test_noisier_averages_are_smoothed_more():
     chosen = [
-        least_risk_smoothing([course(noise)], CONDITION, ["single"], (0.0, 0.1))
+        least_risk([smoothing_risk(course(noise), CONDITION == "single")], (0.0, 0.1))
         for noise in (0.1, 1.0, 4.0)
     ]
     assert chosen == sorted(chosen)

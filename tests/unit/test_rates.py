@@ -8,7 +8,7 @@ from lfptools import rates, resample
 from lfptools.errors import InputError
 from lfptools.firing_latency import critical_counts, poisson_latency
 from lfptools.model import CutSession
-from tests.spike_sessions import choices, session, trains
+from tests.spike_sessions import choices, session, trains, unfinished_rows
 
 WINDOWS = {"early": (5.0, 40.0), "late": (50.0, 150.0)}
 
@@ -39,7 +39,7 @@ def rows_of(cut, seed=1):
     signs = {
         each: resample.sign_flips(n, cut.choices.resample.n, rng) for each, n in counts.items()
     }
-    return rates.firing_rows(cut, weights=weights, signs=signs)
+    return unfinished_rows(cut, weights=weights, signs=signs)
 
 
 @pytest.fixture(scope="module")
@@ -157,7 +157,7 @@ def test_a_latency_of_few_resamples_is_said():
 def test_no_units_or_no_windows_give_no_rows(responding):
     rng = np.random.default_rng(7)
     bare = session(choices(windows=WINDOWS), condition=["single"] * 10)
-    assert rates.firing_rows(bare, weights={}, signs={}) == []
+    assert unfinished_rows(bare, weights={}, signs={}) == []
     assert rates.rate_curves(bare, level=0.95) == ()
     unwindowed = whisk([fire(rng, RISE_FALL, 10)], condition=["single"] * 10, windows={})
     assert rows_of(unwindowed) == []
@@ -165,13 +165,13 @@ def test_no_units_or_no_windows_give_no_rows(responding):
 
 def test_weights_must_fit(responding):
     with pytest.raises(InputError, match="no bootstrap weights for condition 'single'"):
-        rates.firing_rows(responding, weights={}, signs={})
+        unfinished_rows(responding, weights={}, signs={})
     wrong = {each: np.full((9, 3), 1 / 3) for each in ("single", "pad")}
     with pytest.raises(InputError, match=r"weights of 'single' has shape \(9, 3\)"):
-        rates.firing_rows(responding, weights=wrong, signs={})
+        unfinished_rows(responding, weights=wrong, signs={})
     fits = {each: np.full((9, 50), 1 / 50) for each in ("single", "pad")}
     with pytest.raises(InputError, match="no random signs for condition 'single'"):
-        rates.firing_rows(responding, weights=fits, signs={})
+        unfinished_rows(responding, weights=fits, signs={})
 
 
 def test_bins_wider_than_the_window_are_refused(responding):

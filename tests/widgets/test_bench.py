@@ -250,6 +250,30 @@ def test_tables_and_figures_are_left_behind(session_file):
     assert ">time after the stimulus (ms)</text>" in svg  # text stays text
 
 
+def test_moves_while_tables_are_written_lose_neither(session_file):
+    talk = Talk(session_file)
+    typed = {"do": "type", "name": "early", "edge": "last", "value": "32"}
+
+    async def main():
+        talk.bench._heard({"do": "tables"})
+        talk.bench._heard({"do": "tables"})
+        talk.bench._heard(typed)
+        for _ in range(600):
+            await asyncio.sleep(0.05)
+            if sum(each["text"].startswith("written") for each in talk.of("said")) == 2:
+                break
+        talk.bench._background.close()
+
+    run(main())
+    assert [each["text"] for each in talk.of("said")][-2:] == [
+        f"written: {session_file.parent / name}" for name in ("bench-tables", "bench-tables-2")
+    ]
+    # Written as things stood at the press, before the window was moved.
+    notes = (session_file.parent / "bench-tables-2" / "latencies.csv").read_text()
+    assert "window chosen on these trials" not in notes
+    assert any(not each["answer"]["stale"] for each in talk.of("answer"))
+
+
 def test_a_name_with_markup_travels_as_text(session_file):
     rename = {"do": "rename", "name": "early", "to": "<img src=x onerror=alert(1)>"}
     talk = conversation(session_file, rename)

@@ -96,6 +96,21 @@ def test_a_newer_job_stops_the_older():
     assert delivered == ["new"]
 
 
+def test_what_is_queued_is_done_and_delivered_whatever_comes_later():
+    delivered = []
+
+    async def main():
+        background = Background(delivered.append)
+        for number in range(3):
+            background.queue(lambda number=number: number, delivered.append)
+        background.start(lambda stop: "newest", delivered.append)
+        await asyncio.sleep(0.1)
+        background.close()
+
+    run(main())
+    assert delivered == [0, 1, 2, "newest"]
+
+
 def test_an_error_of_the_newest_job_reaches_the_caller():
     errors = []
 

@@ -61,6 +61,11 @@ class Answers:
         return self._basis.cut
 
     @property
+    def estimated(self) -> tuple[str, ...]:
+        """Conditions with enough trials, in order of appearance."""
+        return self._basis.estimated
+
+    @property
     def mapped_areas(self) -> tuple[str, ...]:
         """Areas with contacts enough for current source density."""
         return tuple(self._basis.csd)

@@ -50,6 +50,7 @@ class Bench:
         self._session = session
         self._newest: Newest[dict[str, Any]] = Newest(self._move, self._failed)
         self._background = Background(self._failed)
+        self._writing = Background(self._failed)
         self._picture: Any = None
         self._open()
         self.surface = Surface(self._heard, **self._scene.traits())
@@ -145,6 +146,8 @@ class Bench:
 
     def _hello(self) -> None:
         """Greet a page; one whose kernel ran ahead of it may find other files by now."""
+        self._gripped = False  # a page that is loaded anew holds nothing
+        self.state.end_gesture()
         if not self._touched and _on_disk(self.state.path) != self._opened:
             self._open()
             self._redraw()
@@ -174,7 +177,7 @@ class Bench:
 
     def _show(self, key: str, value: str) -> None:
         if key == "unit":
-            self.state.show(units=(value,) if value in self.state.units_of(self.value.area) else ())
+            self.state.show(units=(value,))
         else:
             self.state.show(**{key: value})
 
@@ -208,9 +211,12 @@ class Bench:
         self._full = full_words(full, window, n_trials)
         self.surface.answer(self._full)
         if self._picture is not None:
-            from IPython.display import Image
+            self._background.start(lambda _stop: self._leaving.still(full), self._pictured)
 
-            self._picture.update(Image(self._leaving.still(full)))
+    def _pictured(self, png: bytes) -> None:
+        from IPython.display import Image
+
+        self._picture.update(Image(png))
 
     def _quick_words(self) -> dict[str, Any]:
         return quick_words(self._quick(), self.value.window(self.value.hand), self._full)
@@ -220,12 +226,12 @@ class Bench:
         return self.answers.quick(view.windows, view.hand, view.condition, view.signal)
 
     def _leave(self, what: str) -> None:
+        leaving, choices = self._leaving, self.state.as_choices()
         self.surface.say("writing ...")
-        self._background.start(lambda _stop: self._leaving.write(what), self._left)
-
-    def _left(self, folder: Path) -> None:
-        self.surface.say(f"written: {folder}")
-        self._answer()
+        self._writing.queue(
+            lambda: leaving.write(what, choices),
+            lambda folder: self.surface.say(f"written: {folder}"),
+        )
 
     def _failed(self, error: Exception) -> None:
         kind = "" if isinstance(error, LfptoolsError) else f"{type(error).__name__}: "

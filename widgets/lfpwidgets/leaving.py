@@ -3,11 +3,11 @@
 from dataclasses import replace
 from pathlib import Path
 
-from matplotlib import rc_context
-
 from lfptools.analysis import analyse
+from lfptools.choices import AnalysisChoices
 from lfptools.io.whole import whole
 from lfptools.plot.sheets import SHEETS
+from lfptools.plot.style import drawing
 from lfptools.report.tables import write_tables
 from lfpwidgets.full import FullAnswer
 from lfpwidgets.picture import still_picture
@@ -34,12 +34,12 @@ class Leaving:
         self._state = state
         self._scene = scene
 
-    def write(self, what: str) -> Path:
+    def write(self, what: str, choices: AnalysisChoices) -> Path:
         """Write "tables" (CSV) or "figure" (PDF, SVG, PNG) into the next free folder.
 
-        The numbers are those that `lfptools run` gives for the saved session.
+        The numbers are those that `lfptools run` gives for a session saved with `choices`.
         """
-        results = analyse(replace(self._state.cut, choices=self._state.as_choices()))
+        results = analyse(replace(self._state.cut, choices=choices))
         folder = self._free(what)
         folder.mkdir(parents=True)
         if what == "tables":
@@ -48,7 +48,7 @@ class Leaving:
         for name, sheet in SHEETS.items():
             figure = sheet(results)
             for kind in _KINDS if figure is not None else ():
-                with rc_context(_EDITABLE), whole(folder / f"{name}.{kind}") as part:
+                with drawing(_EDITABLE), whole(folder / f"{name}.{kind}") as part:
                     figure.savefig(part, format=kind, metadata=_undated(kind))
         return folder
 

@@ -83,10 +83,24 @@ class Background:
         `stop()` turns true when the job is overtaken.
         """
         self.stop()
-        turn, loop = self._turn, asyncio.get_running_loop()
+        turn = self._turn
+        self._submit(job, deliver, lambda: turn != self._turn)
 
-        def overtaken() -> bool:
-            return turn != self._turn
+    def queue(self, job: Callable[[], Any], deliver: Callable[[Any], None]) -> None:
+        """Do `job()` after those before it; whatever comes later, its result is delivered."""
+        self._submit(lambda _stop: job(), deliver, lambda: False)
+
+    def _submit(
+        self,
+        job: Callable[[Callable[[], bool]], Any],
+        deliver: Callable[[Any], None],
+        overtaken: Callable[[], bool],
+    ) -> None:
+        loop = asyncio.get_running_loop()
+
+        def settle(use: Callable[[Any], None], value: Any) -> None:
+            if not overtaken():
+                use(value)
 
         def run() -> None:
             if overtaken():
@@ -95,15 +109,11 @@ class Background:
                 result = job(overtaken)
             except Exception as error:
                 # The name of an except clause is gone once it ends; keep the error itself.
-                loop.call_soon_threadsafe(self._settle, turn, self._failed, error)
+                loop.call_soon_threadsafe(settle, self._failed, error)
             else:
-                loop.call_soon_threadsafe(self._settle, turn, deliver, result)
+                loop.call_soon_threadsafe(settle, deliver, result)
 
         self._threads.submit(run)
-
-    def _settle(self, turn: int, use: Callable[[Any], None], value: Any) -> None:
-        if turn == self._turn:
-            use(value)
 
     def close(self) -> None:
         """Stop the running job and end the thread."""

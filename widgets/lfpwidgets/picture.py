@@ -11,7 +11,6 @@ from io import BytesIO
 from typing import Any
 
 import numpy as np
-from matplotlib import rc_context
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
@@ -20,7 +19,7 @@ from lfptools.model import Contacts
 from lfptools.plot.averages import draw_averages
 from lfptools.plot.depth_map import draw_depth_map
 from lfptools.plot.firing import draw_raster, draw_rates
-from lfptools.plot.style import SETTINGS, looks
+from lfptools.plot.style import SETTINGS, drawing, looks
 from lfptools.rates import RateCurve
 
 WIDTH_PX = 680
@@ -63,7 +62,7 @@ def averages_strip(
     """Draw the signal that stands for each area, one axes an area, all conditions."""
     areas = list(dict.fromkeys(each.area for each in averages))
     height = AREA_PX * len(areas) + _TOP_PX
-    with rc_context(SETTINGS):
+    with drawing():
         figure = _figure(height)
         frames = []
         for index, area in enumerate(areas):
@@ -96,7 +95,7 @@ def map_strip(
     limit: float,
 ) -> Strip:
     """Draw the map of depth and time of one area and condition."""
-    with rc_context(SETTINGS):
+    with drawing():
         figure = _figure(MAP_PX)
         ax = _axes(figure, 18, MAP_PX - 18, MAP_PX, span_ms)
         draw_depth_map(ax, average, (), contacts=contacts, layers=layers, limit=limit)
@@ -124,7 +123,7 @@ def units_strip(
 ) -> Strip:
     """Draw the rates of an area by condition and the raster of one unit."""
     middle = 20 + (UNITS_PX - 20 - _BOTTOM_PX) // 2
-    with rc_context(SETTINGS):
+    with drawing():
         figure = _figure(UNITS_PX)
         upper = _axes(figure, 18, middle - 8, UNITS_PX, span_ms)
         draw_rates(upper, curves, looks=looks(conditions), spans_ms={})
@@ -162,7 +161,7 @@ def still_picture(
     """
     areas = list(dict.fromkeys(each.area for each in averages))
     height = AREA_PX * len(areas) + _TOP_PX + _BOTTOM_PX
-    with rc_context(SETTINGS):
+    with drawing():
         figure = _figure(height)
         for index, area in enumerate(areas):
             top = _TOP_PX + AREA_PX * index
@@ -185,7 +184,7 @@ def still_picture(
 def time_strip(span_ms: tuple[float, float]) -> Strip:
     """Draw the time axis alone, for sessions whose lowest strip has none."""
     height = _BOTTOM_PX + 4
-    with rc_context(SETTINGS):
+    with drawing():
         figure = _figure(height)
         ax = _axes(figure, 2, 4, height, span_ms)
         ax.set_yticks([])

@@ -6,7 +6,6 @@ import numpy as np
 
 from lfptools.analysis.memo import Memo
 from lfptools.evoked import Average
-from lfptools.trials import MIN_TRIALS
 from lfpwidgets.answers import Answers
 from lfpwidgets.picture import (
     LEFT_PX,
@@ -20,6 +19,7 @@ from lfpwidgets.picture import (
     units_strip,
 )
 from lfpwidgets.state import BenchState
+from lfpwidgets.view import units_of
 
 #: Time shown before the stimulus, ms, where the trial reaches so far.
 _BEFORE_MS = 100.0
@@ -41,11 +41,7 @@ class Scene:
         self._state = state
         self._answers = answers
         self._strips = Memo(_MOST_STRIPS)
-        self._conditions = [
-            name
-            for name in state.cut.table.conditions
-            if np.count_nonzero(state.cut.condition == name) >= MIN_TRIALS
-        ]
+        self._conditions = answers.estimated
 
     @property
     def span_ms(self) -> tuple[float, float]:
@@ -81,7 +77,7 @@ class Scene:
 
     def _plain(self, strips: list[dict[str, Any]], turn: int) -> dict[str, Any]:
         state, view = self._state, self._state.view
-        units = [*state.units_of(view.area)] if view.area else []
+        units = [*units_of(state.cut, view.area)] if view.area else []
         return {
             "title": state.cut.name + (" (unsaved windows)" if state.unsaved else ""),
             "geometry": {
@@ -184,7 +180,7 @@ class Scene:
 
     def _unit(self) -> str | None:
         view = self._state.view
-        units = view.units or self._state.units_of(view.area)
+        units = view.units or units_of(self._state.cut, view.area)
         return units[0] if units else None
 
 

@@ -20,12 +20,20 @@ from lfpwidgets.changes import Changes, Observer
 from lfpwidgets.grid import SampleGrid, grid_of
 from lfpwidgets.history import History
 from lfpwidgets.kept import KeptFile
-from lfpwidgets.view import SignalKind, View, chosen_here, first_view, free_name, moved, usable_name
+from lfpwidgets.view import (
+    SignalKind,
+    View,
+    chosen_here,
+    first_view,
+    free_name,
+    looked_at,
+    moved,
+    usable_name,
+)
 
 Edge = Literal["first", "last", "both"]
 
 _EXTREMA = ("trough", "peak")
-_SIGNALS = ("csd", "lfp")
 
 
 @dataclass(frozen=True, slots=True)
@@ -247,30 +255,10 @@ class BenchState:
             If the session has no such condition, area or unit in the area, or the signal is
             neither "csd" nor "lfp". Nothing changes then.
         """
-        view = self.view
-        if condition is not None:
-            view = replace(
-                view, condition=one_of("condition", condition, self.cut.table.conditions)
-            )
-        if area is not None and area != view.area:
-            view = replace(view, area=one_of("area", area, self.cut.area_names), units=())
-        if signal is not None:
-            one_of("signal", signal, _SIGNALS)
-            view = replace(view, signal=signal)
-        if units is not None:
-            for unit in units:
-                one_of(f"the unit of {view.area}", unit, self.units_of(view.area))
-            view = replace(view, units=tuple(dict.fromkeys(units)))
-        self._go(replace(self._now, view=view))
-
-    def units_of(self, area: str) -> tuple[str, ...]:
-        """Return the names of an area's units."""
-        spikes = self.cut.spikes
-        if spikes is None:
-            return ()
-        return tuple(
-            unit for unit, where in zip(spikes.unit, spikes.area, strict=True) if where == area
+        view = looked_at(
+            self.view, self.cut, condition=condition, area=area, signal=signal, units=units
         )
+        self._go(replace(self._now, view=view))
 
     # Back and forth.
 

@@ -1,11 +1,12 @@
 """What the bench shows at one moment, as plain records; windows and edits in, windows out."""
 
-from dataclasses import dataclass
-from typing import Literal
+from dataclasses import dataclass, replace
+from typing import Literal, get_args
 
 import msgspec
 import numpy as np
 
+from lfptools.checks import one_of
 from lfptools.choices import Extremum, Span, WindowChoice
 from lfptools.errors import InputError
 from lfptools.model import CutSession
@@ -63,6 +64,45 @@ def first_view(cut: CutSession, windows: tuple[WindowChoice, ...]) -> View:
         area=cut.areas[0].area if cut.areas else cut.area_names[0],
         signal=cut.choices.direction.signal,
     )
+
+
+def units_of(cut: CutSession, area: str) -> tuple[str, ...]:
+    """Return the names of an area's units."""
+    if cut.spikes is None:
+        return ()
+    pairs = zip(cut.spikes.unit, cut.spikes.area, strict=True)
+    return tuple(unit for unit, where in pairs if where == area)
+
+
+def looked_at(
+    view: View,
+    cut: CutSession,
+    *,
+    condition: str | None,
+    area: str | None,
+    signal: SignalKind | None,
+    units: tuple[str, ...] | None,
+) -> View:
+    """Return a view of another condition, area, signal or other units; None leaves what is shown.
+
+    Raises
+    ------
+    InputError
+        If the session has no such condition, area or unit in the area, or the signal is
+        neither "csd" nor "lfp".
+    """
+    if condition is not None:
+        view = replace(view, condition=one_of("condition", condition, cut.table.conditions))
+    if area is not None and area != view.area:
+        view = replace(view, area=one_of("area", area, cut.area_names), units=())
+    if signal is not None:
+        one_of("signal", signal, get_args(SignalKind))
+        view = replace(view, signal=signal)
+    if units is not None:
+        for unit in units:
+            one_of(f"the unit of {view.area}", unit, units_of(cut, view.area))
+        view = replace(view, units=tuple(dict.fromkeys(units)))
+    return view
 
 
 def moved(window: WindowChoice, span_ms: Span, own_direction_ms: Span | None) -> WindowChoice:
