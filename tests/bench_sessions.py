@@ -4,6 +4,8 @@ One wave in S1 and M1, sampled at different rates, and a few spikes; the conditi
 few trials to be estimated.
 """
 
+from contextlib import contextmanager
+
 import numpy as np
 
 from lfptools.choices import AnalysisChoices, ResampleChoice, TrialsChoice, WindowChoice, WindowFor
@@ -65,3 +67,13 @@ CUT = cut_session()
 def span(state, name):
     """Return the span of a window as the bench has it."""
     return state.view.window(name).span_ms
+
+
+@contextmanager
+def gesture(state):
+    """Take all moves inside the block as one step, whatever becomes of them."""
+    state.begin_gesture()
+    try:
+        yield
+    finally:
+        state.end_gesture()

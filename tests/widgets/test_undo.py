@@ -8,7 +8,7 @@ from hypothesis import strategies as st
 from lfptools import InputError
 from lfpwidgets.history import MOST_STEPS
 from lfpwidgets.state import BenchState
-from tests.bench_sessions import CUT, EARLY, LATE, span
+from tests.bench_sessions import CUT, EARLY, LATE, gesture, span
 
 
 def test_undo_and_redo(state):
@@ -63,7 +63,7 @@ def test_the_signal_is_a_step(state):
 
 
 def test_a_gesture_is_one_step(state):
-    with state.gesture():
+    with gesture(state):
         for first_ms in np.arange(5.6, 30, 0.8):
             state.move("early", float(first_ms), 40.0)
         assert state.can_undo
@@ -78,7 +78,7 @@ def test_a_gesture_is_one_step(state):
 def test_a_gesture_that_comes_back_leaves_nothing(state):
     state.move("late", 104.0, 200.0)
     state.undo()
-    with state.gesture():
+    with gesture(state):
         state.move("early", 8.0, 140.0)
         assert not state.can_redo
         state.move("early", 5.0, 40.0)  # 5 is between two samples: 4.8
@@ -86,13 +86,13 @@ def test_a_gesture_that_comes_back_leaves_nothing(state):
     state.undo()
     state.nudge("early", "first", 1)
     start = state.view
-    with state.gesture():
+    with gesture(state):
         state.move("early", 8.0, 140.0)
         state.move("early", *start.window("early").span_ms)
     assert state.view == start
     state.undo()
     assert state.view.windows == (EARLY, LATE)
-    with state.gesture():
+    with gesture(state):
         state.set_extremum("early", "peak")
         state.set_extremum("early", "trough")
     assert state.view.windows == (EARLY, LATE)  # unmarked
@@ -101,7 +101,7 @@ def test_a_gesture_that_comes_back_leaves_nothing(state):
 
 def test_a_refused_move_in_a_gesture_keeps_the_rest(state):
     def drag():
-        with state.gesture():
+        with gesture(state):
             state.move("early", 8.0, 40.0)
             state.move("early", 8.0, 400.0)
 

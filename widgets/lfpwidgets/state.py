@@ -3,8 +3,7 @@
 No widget is needed: views call the moves and observe what changes.
 """
 
-from collections.abc import Callable, Iterator
-from contextlib import contextmanager
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Literal
@@ -282,17 +281,11 @@ class BenchState:
         self.end_gesture()
         self._return_to(self._history.redo(self._now))
 
-    @contextmanager
-    def gesture(self) -> Iterator[None]:
-        """Take all moves inside the block as one step: a drag is many moves and one undo."""
-        self.begin_gesture()
-        try:
-            yield
-        finally:
-            self.end_gesture()
-
     def begin_gesture(self) -> None:
-        """Take the moves from here to `end_gesture` as one step; one under way ends first."""
+        """Take the moves from here to `end_gesture` as one step; one under way ends first.
+
+        A drag is many moves and one undo.
+        """
         self.end_gesture()
         self._history.begin_gesture(self._now)
 
